@@ -1,0 +1,182 @@
+//! A whole run as plain data: what the record holds, and what review reads.
+//!
+//! Field meanings are those of the record; energies are in the formula's unit.
+
+use crate::form::Form;
+use crate::range::Sample;
+
+/// A remark with a word code.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct Note {
+    /// Word code, for example `even`, `crossing`, `cancellation`.
+    pub code: String,
+    /// A sentence for the reader.
+    pub text: String,
+}
+
+/// A file with its SHA-256 in lower-case hexadecimal.
+#[derive(Clone, Debug, PartialEq, Eq)]
+pub struct DigestedFile {
+    /// File name, no folder.
+    pub file: String,
+    /// Digest.
+    pub sha256: String,
+}
+
+/// One resolved scalar of the spec.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Input {
+    /// Path of the key, for example `systems.electron.stack[0].thickness`.
+    pub path: String,
+    /// Number as written, in `unit`.
+    pub value: f64,
+    /// Unit as written; `1` for a pure number.
+    pub unit: String,
+}
+
+/// The control.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ControlOutcome {
+    /// Symbol as in the spec.
+    pub symbol: String,
+    /// Unit as in the spec.
+    pub unit: String,
+    /// Operating point.
+    pub at: f64,
+    /// Wanted interval.
+    pub within: (f64, f64),
+}
+
+/// A range with its reasons.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Valid {
+    /// Lower end, 7 digits, rounded inwards.
+    pub from: f64,
+    /// Upper end, 7 digits, rounded inwards.
+    pub to: f64,
+    /// Why each side ends, the record's words.
+    pub limited_by: [String; 2],
+}
+
+/// One state's part in E2.
+#[derive(Clone, Debug, PartialEq)]
+pub struct ContributionOutcome {
+    /// System's name.
+    pub system: String,
+    /// Level number; `None` is written `"direct"`.
+    pub level: Option<usize>,
+    /// Energy at the operating point.
+    pub energy: f64,
+    /// Term over sum.
+    pub share: f64,
+}
+
+/// First-order amplitude of a state.
+#[derive(Clone, Debug, PartialEq)]
+pub struct MixingOutcome {
+    /// System's name.
+    pub system: String,
+    /// Level number.
+    pub level: usize,
+    /// Per control unit.
+    pub coefficient: f64,
+}
+
+/// Whether the formula gives the level or its change.
+#[derive(Clone, Copy, Debug, PartialEq, Eq)]
+pub enum ValueKind {
+    /// The level itself.
+    Absolute,
+    /// Its change from the operating point.
+    Shift,
+}
+
+/// One formula.
+#[derive(Clone, Debug, PartialEq)]
+pub struct FormulaOutcome {
+    /// Name.
+    pub name: String,
+    /// Unit of the value, as in the spec.
+    pub unit: String,
+    /// What the value is.
+    pub value: ValueKind,
+    /// The closed form with written digits.
+    pub form: Form,
+    /// E0 to E4, written digits (all zero-padded; `series[0]` is E0 for shifts too).
+    pub series: [f64; 5],
+    /// Uncertainty of each.
+    pub uncertainty: [f64; 5],
+    /// Powers that a symmetry makes zero.
+    pub zero_by_symmetry: Vec<usize>,
+    /// Largest error allowed.
+    pub tolerance: f64,
+    /// The range.
+    pub valid: Valid,
+    /// Largest remainder, numerical error, error of written digits inside the range.
+    pub error: [f64; 3],
+    /// Per side, where the tolerance is first exceeded.
+    pub first_to_fail: [Option<f64>; 2],
+    /// Contributions to E2.
+    pub contributions: Vec<ContributionOutcome>,
+    /// First-order mixing.
+    pub mixing: Vec<MixingOutcome>,
+    /// System's name and the first twelve levels of its block.
+    pub levels: Vec<(String, Vec<f64>)>,
+    /// System's name and basis size.
+    pub sizes: Vec<(String, usize)>,
+    /// Samples over the range.
+    pub samples: Vec<Sample>,
+    /// Remarks.
+    pub notes: Vec<Note>,
+}
+
+/// A formula inside one output file.
+#[derive(Clone, Debug, PartialEq)]
+pub struct OutputFormula {
+    /// Name.
+    pub name: String,
+    /// Rounding bound of the number format, formula's unit.
+    pub rounding: f64,
+    /// What the file evaluates.
+    pub coefficients: serde_json::Value,
+    /// The file's own range, control's unit.
+    pub valid: Valid,
+}
+
+/// One written file.
+#[derive(Clone, Debug, PartialEq)]
+pub struct OutputOutcome {
+    /// File name.
+    pub file: String,
+    /// Language word.
+    pub language: String,
+    /// Number word; `None` for circuit languages.
+    pub number: Option<String>,
+    /// Digest of the whole file.
+    pub sha256: String,
+    /// Its formulas.
+    pub formulas: Vec<OutputFormula>,
+}
+
+/// A whole run.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Outcome {
+    /// Spec's `name`.
+    pub name: String,
+    /// Spec's `summary`.
+    pub summary: String,
+    /// Spec's file name and digest.
+    pub spec: DigestedFile,
+    /// Other input files.
+    pub sources: Vec<DigestedFile>,
+    /// Every resolved scalar, sorted by path.
+    pub inputs: Vec<Input>,
+    /// The control.
+    pub control: ControlOutcome,
+    /// The formulas in the order of the spec.
+    pub formulas: Vec<FormulaOutcome>,
+    /// The written files, empty until they were emitted.
+    pub outputs: Vec<OutputOutcome>,
+    /// Warnings for the user.
+    pub warnings: Vec<Note>,
+}

@@ -1,0 +1,160 @@
+//! Eigenpairs, inertia and resolvents of a [`Hermitian`] matrix.
+//!
+//! First version: everything through a dense eigendecomposition.
+
+use nalgebra::{DMatrix, SymmetricEigen};
+
+use super::{Hermitian, Scalar, State};
+use crate::diagnostic::{Error, Result};
+
+/// A level and its state, normalised to 1.
+#[derive(Clone, Debug)]
+pub struct Eigenpair<T: Scalar> {
+    /// Position in ascending order, from 1.
+    pub number: usize,
+    /// Energy, in the matrix's unit.
+    pub energy: f64,
+    /// Eigenvector; the phase is arbitrary.
+    pub state: State<T>,
+}
+
+/// Factors of `H - shift`.
+#[derive(Clone, Debug)]
+pub struct Factor<T: Scalar> {
+    shift: f64,
+    energies: Vec<f64>,
+    states: DMatrix<T>,
+}
+
+impl<T: Scalar> Factor<T> {
+    /// Number of levels below the shift.
+    #[must_use]
+    pub fn below(&self) -> usize {
+        self.energies.iter().filter(|&&e| e < self.shift).count()
+    }
+
+    /// Solves `(H - shift) x = right`.
+    #[must_use]
+    pub fn solve(&self, right: &State<T>) -> State<T> {
+        let mut out = State::zeros(right.len());
+        for (idx, &energy) in self.energies.iter().enumerate() {
+            let column = self.states.column(idx);
+            let amount = column.dotc(right).unscale(energy - self.shift);
+            out.axpy(amount, &column, T::one());
+        }
+        out
+    }
+}
+
+/// All levels, ascending.
+///
+/// # Errors
+/// If a matrix element is not finite or the iteration does not converge.
+pub fn spectrum<T: Scalar>(matrix: &Hermitian<T>) -> Result<Vec<Eigenpair<T>>> {
+    let dense = matrix.to_dense();
+    if dense.iter().any(|x| !x.is_finite()) {
+        return Err(Error::internal("a matrix element is not finite"));
+    }
+    let order = dense.nrows();
+    let eigen = SymmetricEigen::try_new(dense, f64::EPSILON, 100 * order.max(10))
+        .ok_or_else(|| Error::internal("an eigenvalue iteration did not converge"))?;
+    let mut ranks: Vec<usize> = (0..order).collect();
+    ranks.sort_by(|&a, &b| eigen.eigenvalues[a].total_cmp(&eigen.eigenvalues[b]));
+    Ok(ranks
+        .into_iter()
+        .enumerate()
+        .map(|(idx, column)| Eigenpair {
+            number: idx + 1,
+            energy: eigen.eigenvalues[column],
+            state: eigen.eigenvectors.column(column).into_owned(),
+        })
+        .collect())
+}
+
+/// Factors of `H - shift`.
+///
+/// # Errors
+/// As [`spectrum`].
+pub fn factor<T: Scalar>(matrix: &Hermitian<T>, shift: f64) -> Result<Factor<T>> {
+    let pairs = spectrum(matrix)?;
+    let order = pairs.len();
+    Ok(Factor {
+        shift,
+        energies: pairs.iter().map(|pair| pair.energy).collect(),
+        states: DMatrix::from_fn(order, order, |row, column| pairs[column].state[row]),
+    })
+}
+
+/// The lowest `count` levels, fewer if the matrix is smaller.
+///
+/// # Errors
+/// As [`spectrum`].
+pub fn lowest<T: Scalar>(matrix: &Hermitian<T>, count: usize) -> Result<Vec<Eigenpair<T>>> {
+    let mut pairs = spectrum(matrix)?;
+    pairs.truncate(count);
+    Ok(pairs)
+}
+
+/// The level with this number, counted from 1; its number is certified by an
+/// inertia count.
+///
+/// # Errors
+/// As [`spectrum`]; `number` beyond the order is an internal error.
+pub fn eigenpair<T: Scalar>(matrix: &Hermitian<T>, number: usize) -> Result<Eigenpair<T>> {
+    spectrum(matrix)?
+        .into_iter()
+        .nth(number.wrapping_sub(1))
+        .ok_or_else(|| Error::internal("a level beyond the order of its matrix was asked for"))
+}
+
+/// The level whose state overlaps most with `guess`, looked for near `energy`;
+/// its number is certified by an inertia count.
+///
+/// # Errors
+/// As [`spectrum`].
+pub fn eigenpair_near<T: Scalar>(
+    matrix: &Hermitian<T>,
+    energy: f64,
+    guess: &State<T>,
+) -> Result<Eigenpair<T>> {
+    let _ = energy;
+    spectrum(matrix)?
+        .into_iter()
+        .max_by(|a, b| {
+            a.state.dotc(guess).modulus_squared().total_cmp(&b.state.dotc(guess).modulus_squared())
+        })
+        .ok_or_else(|| Error::internal("a matrix of order 0"))
+}
+
+/// The reduced resolvent: the solution of `(H - energy) x = right` orthogonal
+/// to `model_space`, the part of `right` inside `model_space` being removed
+/// first. `model_space` holds orthonormal eigenvectors of `H` and includes every
+/// one whose level is at or very near `energy`.
+///
+/// # Errors
+/// As [`spectrum`].
+pub fn reduced_solve<T: Scalar>(
+    matrix: &Hermitian<T>,
+    energy: f64,
+    model_space: &[State<T>],
+    right: &State<T>,
+) -> Result<State<T>> {
+    let mut clean = right.clone();
+    let project = |state: &mut State<T>| {
+        for member in model_space {
+            let amount = member.dotc(state);
+            state.axpy(-amount, member, T::one());
+        }
+    };
+    project(&mut clean);
+    let mut out = State::zeros(right.len());
+    for pair in spectrum(matrix)? {
+        let inside: f64 = model_space.iter().map(|member| member.dotc(&pair.state).modulus_squared()).sum();
+        if inside < 0.5 {
+            let amount = pair.state.dotc(&clean).unscale(pair.energy - energy);
+            out.axpy(amount, &pair.state, T::one());
+        }
+    }
+    project(&mut out);
+    Ok(out)
+}

@@ -1,0 +1,1 @@
+//! Check, compare, explain, report.

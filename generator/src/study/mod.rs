@@ -1,0 +1,1 @@
+//! Families, sweeps and sensitivities: many runs of the pipeline.

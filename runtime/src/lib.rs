@@ -1,0 +1,3 @@
+//! The reference meaning of a generated formula: number formats, status and
+//! evaluation order, without the standard library.
+#![no_std]
