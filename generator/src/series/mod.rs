@@ -98,3 +98,70 @@ pub struct PairSeries {
     /// Estimated errors of `half_gap_squared`, times 4.
     pub half_gap_squared_uncertainty: [f64; 5],
 }
+
+/// Runs one expression on the level inside an [`AnyLevel`], whatever its field.
+#[macro_export]
+macro_rules! with_level {
+    ($any:expr, $level:ident => $body:expr) => {
+        match $any {
+            $crate::series::AnyLevel::Real($level) => $body,
+            $crate::series::AnyLevel::Complex($level) => $body,
+        }
+    };
+}
+
+impl AnyLevel {
+    /// Number in its block, from 1.
+    #[must_use]
+    pub fn number(&self) -> usize {
+        with_level!(self, level => level.number)
+    }
+
+    /// E0 to E5, model units.
+    #[must_use]
+    pub fn energies(&self) -> &[f64; 6] {
+        with_level!(self, level => &level.energies)
+    }
+
+    /// Their uncertainty at this refinement.
+    #[must_use]
+    pub fn uncertainty(&self) -> &[f64; 6] {
+        with_level!(self, level => &level.uncertainty)
+    }
+
+    /// Why coefficients are exactly zero.
+    #[must_use]
+    pub fn zero(&self) -> &[Option<String>; 6] {
+        with_level!(self, level => &level.zero)
+    }
+
+    /// Largest single term summed for each coefficient.
+    #[must_use]
+    pub fn largest_term(&self) -> &[f64; 6] {
+        with_level!(self, level => &level.largest_term)
+    }
+
+    /// Contributions to E2.
+    #[must_use]
+    pub fn contributions(&self) -> &[Contribution] {
+        with_level!(self, level => &level.contributions)
+    }
+
+    /// First-order mixing.
+    #[must_use]
+    pub fn mixing(&self) -> &[Mixing] {
+        with_level!(self, level => &level.mixing)
+    }
+
+    /// Energies of the first twelve levels of the block.
+    #[must_use]
+    pub fn levels(&self) -> &[f64] {
+        with_level!(self, level => &level.levels)
+    }
+
+    /// Remarks.
+    #[must_use]
+    pub fn notes(&self) -> &[crate::outcome::Note] {
+        with_level!(self, level => &level.notes)
+    }
+}
