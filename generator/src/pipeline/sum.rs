@@ -1,0 +1,246 @@
+//! The series of a whole formula: its levels and known terms added up.
+//!
+//! In: the settled levels of a sum. Out: a [`Sum`]: E0 to E4 in the formula's
+//! unit, their uncertainty, and which of them a symmetry makes zero.
+
+use std::rc::Rc;
+
+use super::settle::Settled;
+use crate::diagnostic::{Diagnostic, Error, Result};
+use crate::expr::Tree;
+use crate::outcome::{ContributionOutcome, MixingOutcome, Note};
+use crate::spec::{self, LevelRef};
+use crate::units::{Unit, energy_factor};
+
+/// One level of a sum, its weight in the formula's unit.
+#[derive(Clone)]
+pub struct LevelTerm {
+    /// Name of its system.
+    pub system: String,
+    /// As the spec refers to it.
+    pub reference: LevelRef,
+    /// Weight as written, without the conversion.
+    pub weight: f64,
+    /// Conversion from the model's unit to the formula's.
+    pub conversion: f64,
+    /// The level.
+    pub settled: Rc<Settled>,
+}
+
+impl LevelTerm {
+    /// Weight and conversion in one.
+    #[must_use]
+    pub fn times(&self) -> f64 {
+        self.weight * self.conversion
+    }
+}
+
+/// A formula's target, solved at the operating point.
+pub struct Sum {
+    /// The levels.
+    pub levels: Vec<LevelTerm>,
+    /// Known terms with their weights.
+    pub known: Vec<(f64, Tree)>,
+    /// E0 to E4.
+    pub series: [f64; 5],
+    /// Their uncertainty.
+    pub uncertainty: [f64; 5],
+    /// Why each is exactly zero, where it is.
+    pub zero: [Option<String>; 5],
+    /// Fifth coefficient, for remainder estimates.
+    pub fifth: f64,
+}
+
+/// The conversion from a model's unit to a formula's.
+///
+/// # Errors
+/// If the two are not of one kind: a mistake of the spec.
+pub fn conversion(from: &Unit, formula: &spec::Formula) -> Result<f64> {
+    energy_factor(from, &formula.unit)
+        .map(|factor| factor.value())
+        .map_err(|fault| Error::spec(fault.diagnostic(Some(formula.place.clone()))))
+}
+
+impl Sum {
+    /// Adds up levels and known terms about `at`.
+    ///
+    /// # Errors
+    /// If a known term or one of its derivatives is not finite at the operating point.
+    pub fn new(levels: Vec<LevelTerm>, known: Vec<(f64, Tree)>, at: f64, formula: &spec::Formula) -> Result<Self> {
+        let mut series = [0.0; 5];
+        let mut uncertainty = [0.0; 5];
+        let mut size = [0.0_f64; 5];
+        let mut fifth = 0.0;
+        let mut zero: [Option<String>; 5] = std::array::from_fn(|power| (power > 0).then(String::new));
+        for term in &levels {
+            let energies = term.settled.level.energies();
+            for power in 0..5 {
+                let part = term.times() * energies[power];
+                series[power] += part;
+                size[power] += part.abs();
+                uncertainty[power] += term.times().abs() * term.settled.uncertainty[power];
+                match (&mut zero[power], &term.settled.level.zero()[power]) {
+                    (Some(reasons), Some(reason)) => {
+                        let sentence = format!("{}: {reason}", term.system);
+                        if !reasons.contains(&sentence) {
+                            if !reasons.is_empty() {
+                                reasons.push_str("; ");
+                            }
+                            reasons.push_str(&sentence);
+                        }
+                    }
+                    (slot, None) => *slot = None,
+                    (None, Some(_)) => {}
+                }
+            }
+            fifth += term.times() * energies[5];
+        }
+        for (weight, tree) in &known {
+            let taylor = tree.taylor(at, 5);
+            for (power, coefficient) in taylor.iter().enumerate() {
+                if !coefficient.is_finite() {
+                    return Err(Error::spec(
+                        Diagnostic::new("undefined", "a known term of the sum is not defined at the operating point")
+                            .at(Some(formula.place.clone()))
+                            .action("move `at`, or change the expression"),
+                    ));
+                }
+                if power == 5 {
+                    fifth += weight * coefficient;
+                } else {
+                    let part = weight * coefficient;
+                    series[power] += part;
+                    size[power] += part.abs();
+                    if part != 0.0 {
+                        zero[power] = None;
+                    }
+                }
+            }
+        }
+        if levels.is_empty() {
+            zero = std::array::from_fn(|_| None);
+        }
+        for power in 0..5 {
+            if zero[power].is_some() {
+                series[power] = 0.0;
+                uncertainty[power] = 0.0;
+            } else {
+                // The additions themselves round.
+                uncertainty[power] = uncertainty[power].max(f64::EPSILON * size[power]);
+            }
+        }
+        Ok(Self { levels, known, series, uncertainty, zero, fifth })
+    }
+
+    /// The known terms' change from the operating point.
+    pub fn known_change(&self, at: f64, control: f64) -> f64 {
+        self.known.iter().map(|(weight, tree)| weight * (tree.value(control, 0.0) - tree.value(at, 0.0))).sum()
+    }
+
+    /// The known terms at the operating point.
+    #[must_use]
+    pub fn known_value(&self, at: f64) -> f64 {
+        self.known.iter().map(|(weight, tree)| weight * tree.value(at, 0.0)).sum()
+    }
+
+    /// Contributions of all levels, energies in the formula's unit.
+    #[must_use]
+    pub fn contributions(&self) -> Vec<ContributionOutcome> {
+        self.levels
+            .iter()
+            .filter(|term| self.zero[2].is_none() && term.settled.level.zero()[2].is_none())
+            .flat_map(|term| {
+                term.settled.level.contributions().iter().map(|one| ContributionOutcome {
+                    system: term.system.clone(),
+                    level: one.level,
+                    energy: term.conversion * one.energy,
+                    share: one.share,
+                })
+            })
+            .collect()
+    }
+
+    /// Mixing of all levels.
+    #[must_use]
+    pub fn mixing(&self) -> Vec<MixingOutcome> {
+        self.levels
+            .iter()
+            .flat_map(|term| {
+                term.settled.level.mixing().iter().map(|one| MixingOutcome {
+                    system: term.system.clone(),
+                    level: one.level,
+                    coefficient: one.coefficient,
+                })
+            })
+            .collect()
+    }
+
+    /// First levels of each block that the sum uses, formula's unit; a system
+    /// that occurs with several blocks is named once per block.
+    #[must_use]
+    pub fn block_levels(&self) -> Vec<(String, Vec<f64>)> {
+        let mut out: Vec<(String, Vec<f64>)> = Vec::new();
+        for term in &self.levels {
+            let levels = term.settled.level.levels().iter().map(|e| term.conversion * e).collect();
+            let same_block = |other: &LevelTerm| {
+                other.system == term.system && other.reference.block == term.reference.block
+            };
+            // The first block of a system carries the system's plain name, by
+            // which readers look; further blocks say which they are.
+            let first = self.levels.iter().find(|other| other.system == term.system).is_some_and(same_block);
+            let name = if first { term.system.clone() } else { block_name(&term.system, &term.reference) };
+            if out.iter().all(|(other, _)| *other != name) {
+                out.push((name, levels));
+            }
+        }
+        out
+    }
+
+    /// Basis sizes by system.
+    #[must_use]
+    pub fn sizes(&self) -> Vec<(String, usize)> {
+        let mut out: Vec<(String, usize)> = Vec::new();
+        for term in &self.levels {
+            match out.iter_mut().find(|(name, _)| *name == term.system) {
+                Some((_, size)) => *size = (*size).max(term.settled.built.size),
+                None => out.push((term.system.clone(), term.settled.built.size)),
+            }
+        }
+        out
+    }
+
+    /// Remarks of the levels, and the proven zeros.
+    #[must_use]
+    pub fn notes(&self) -> Vec<Note> {
+        let mut out: Vec<Note> = Vec::new();
+        let mut push = |note: Note| {
+            if !out.contains(&note) {
+                out.push(note);
+            }
+        };
+        for (power, reason) in self.zero.iter().enumerate() {
+            if let (1, Some(reason)) = (power, reason) {
+                push(Note {
+                    code: "even".into(),
+                    text: format!("the odd coefficients vanish by symmetry ({reason})"),
+                });
+            }
+        }
+        for term in &self.levels {
+            term.settled
+                .level
+                .notes()
+                .iter()
+                .chain(&term.settled.notes)
+                .chain(&term.settled.built.notes)
+                .for_each(|note| push(note.clone()));
+        }
+        out
+    }
+}
+
+/// A system's name with the values that select its block, `atom (m = 1)`.
+fn block_name(system: &str, reference: &LevelRef) -> String {
+    let values: Vec<String> = reference.block.iter().map(|(name, value)| format!("{name} = {value}")).collect();
+    format!("{system} ({})", values.join(", "))
+}
