@@ -100,11 +100,10 @@ impl Drop for Scratch {
 /// # Panics
 /// If the tool is missing (never a silent skip) or fails.
 pub fn tool(folder: &Path, name: &str, arguments: &[&str]) -> Output {
-    let output = Command::new(name)
-        .args(arguments)
-        .current_dir(folder)
-        .output()
-        .unwrap_or_else(|e| panic!("{name} is needed by this check and does not start ({e}); see tests/run"));
+    let output =
+        Command::new(name).args(arguments).current_dir(folder).output().unwrap_or_else(|e| {
+            panic!("{name} is needed by this check and does not start ({e}); see tests/run")
+        });
     assert!(output.status.success(), "{name} {arguments:?}: {}", text(&output));
     output
 }
