@@ -1,0 +1,1 @@
+//! Generated files, compiled by the tools of their language and run.

@@ -1,0 +1,2 @@
+//! Published values and general-purpose libraries against the program, one
+//! file per source.
