@@ -23,6 +23,7 @@ mod symbol;
 pub use dimension::{Dimension, PARTS};
 pub use energy::{EnergyKind, energy_factor};
 pub use fault::Fault;
+pub(crate) use quantity::read_number;
 pub use quantity::{Quantity, is_quantity};
 pub use suggest::nearest;
 

@@ -137,18 +137,18 @@ pub fn is_quantity(text: &str) -> bool {
 }
 
 /// A decimal number at the start of a text.
-pub(crate) struct Number {
+struct Number {
     /// Bytes up to the exponent.
-    pub mantissa: usize,
+    mantissa: usize,
     /// Bytes in all.
-    pub length: usize,
+    length: usize,
     /// Power of ten; `None` if it is beyond all use.
-    pub exponent: Option<i32>,
+    exponent: Option<i32>,
 }
 
 impl Number {
     /// Finds the longest decimal number, sign allowed, at the start.
-    pub fn scan(text: &str) -> Option<Self> {
+    fn scan(text: &str) -> Option<Self> {
         let bytes = text.as_bytes();
         let digits = |from: usize| bytes.iter().skip(from).take_while(|b| b.is_ascii_digit()).count();
         let sign = usize::from(matches!(bytes.first(), Some(b'+' | b'-')));
@@ -177,6 +177,17 @@ impl Number {
         }
         Some(Self { mantissa, length: end, exponent })
     }
+}
+
+/// The decimal number at the start of a text, with its length in bytes; not
+/// finite if it is out of range.
+pub(crate) fn read_number(text: &str) -> Option<(f64, usize)> {
+    let number = Number::scan(text)?;
+    let value = match (text.get(..number.mantissa), number.exponent) {
+        (Some(mantissa), Some(exponent)) => format!("{mantissa}e{exponent}").parse().unwrap_or(f64::NAN),
+        _ => f64::NAN,
+    };
+    Some((value, number.length))
 }
 
 #[cfg(test)]
