@@ -7,6 +7,8 @@
 //!
 //! Not here: solving; YAML types outside this folder.
 
+mod operators;
+
 use nalgebra::DMatrix;
 
 use crate::diagnostic::Place;
@@ -197,18 +199,29 @@ pub enum PartKind {
 }
 
 /// A Hamiltonian written in operators.
+///
+/// Matrices of the operators, and what their unit is worth in a tree
+/// ([`PartKind::operator`] gives both):
+///
+/// - spins: `.x .y .z .raise .lower` in units of hbar, `.sq` in hbar^2, all worth 1;
+/// - rotor, oscillator, phase, states, intervals of numbers: pure numbers, worth 1;
+///   `.p` of an interval of numbers is -i d/dx;
+/// - interval of lengths: `.x` in nm, worth 1 nm; `.p` is -i d/dx with x in nm,
+///   worth hbar/nm. So `p^2/(2*m)` comes out in energy with `m` a mass, and a
+///   tree holds `P` with the factor already folded in.
 #[derive(Clone, Debug)]
 pub struct Parts {
     /// The parts in the order of the spec.
     pub parts: Vec<Part>,
-    /// The Hamiltonian; result in `unit`. Operators are in units of hbar (spins),
-    /// nm and eV-free natural form (interval: `.x` in nm, `.p` in hbar/nm folded by the spec stage).
+    /// The Hamiltonian; its value in `unit`, the control in the control's unit. No
+    /// position stands in it.
     pub hamiltonian: Tree,
-    /// Unit of the Hamiltonian's value.
+    /// Unit of the Hamiltonian's value: the coherent unit of its kind (eV, Hz, 1/m, K or
+    /// 1), see [`EnergyKind::coherent_unit`](crate::units::EnergyKind::coherent_unit).
     pub unit: Unit,
     /// Place of the Hamiltonian's text.
     pub place: Place,
-    /// Conserved operators: name, operator, place.
+    /// Conserved operators: name, operator (a pure number, no control), place.
     pub conserved: Vec<(String, Tree, Place)>,
 }
 
