@@ -19,7 +19,8 @@ impl Tree {
     }
 
     /// Numeric factor in front, and what is left (`None` for 1).
-    fn split(self) -> (f64, Option<Self>) {
+    #[must_use]
+    pub fn into_factor(self) -> (f64, Option<Self>) {
         match self {
             Self::Number(number) => (number, None),
             Self::Multiply(left, right) => match *left {
@@ -27,7 +28,7 @@ impl Tree {
                 left => (1.0, Some(Self::Multiply(Box::new(left), right))),
             },
             Self::Negative(inner) => {
-                let (number, rest) = inner.split();
+                let (number, rest) = inner.into_factor();
                 (-number, rest)
             }
             other => (1.0, Some(other)),
@@ -47,7 +48,7 @@ impl Tree {
     /// `-a`.
     #[must_use]
     pub fn negated(self) -> Self {
-        let (number, rest) = self.split();
+        let (number, rest) = self.into_factor();
         Self::joined(-number, rest)
     }
 
@@ -76,8 +77,8 @@ impl Tree {
     /// `a b`, in order.
     #[must_use]
     pub fn times(self, other: Self) -> Self {
-        let (a, left) = self.split();
-        let (b, right) = other.split();
+        let (a, left) = self.into_factor();
+        let (b, right) = other.into_factor();
         let rest = match (left, right) {
             (None, rest) | (rest, None) => rest,
             (Some(left), Some(right)) => Some(Self::Multiply(Box::new(left), Box::new(right))),
@@ -88,8 +89,8 @@ impl Tree {
     /// `a / b`.
     #[must_use]
     pub fn over(self, other: Self) -> Self {
-        let (a, left) = self.split();
-        let (b, right) = other.split();
+        let (a, left) = self.into_factor();
+        let (b, right) = other.into_factor();
         let rest = match (left, right) {
             (rest, None) => rest,
             (left, Some(right)) => {
@@ -107,7 +108,7 @@ impl Tree {
             (_, Self::Number(0.0)) => Self::Number(1.0),
             (a, Self::Number(1.0)) => a,
             (a, Self::Number(b)) if libm::floor(b) == b && b.abs() <= FACTORED_POWER => {
-                let (number, rest) = a.split();
+                let (number, rest) = a.into_factor();
                 let raised = rest.map(|rest| Self::Power(Box::new(rest), Box::new(Self::Number(b))));
                 Self::joined(power(number, b), raised)
             }

@@ -3,46 +3,46 @@
 use super::{PartOperator, Tree};
 
 impl Tree {
-    /// True for every node, leaves included, until `stop` says so.
-    fn any(&self, test: &mut dyn FnMut(&Self) -> bool) -> bool {
+    /// True if the test holds for any node, leaves included.
+    pub fn uses(&self, test: &mut dyn FnMut(&Self) -> bool) -> bool {
         if test(self) {
             return true;
         }
         match self {
             Self::Number(_) | Self::Control | Self::Position | Self::Operator { .. } | Self::Dot(..) => false,
-            Self::Negative(inner) => inner.any(test),
+            Self::Negative(inner) => inner.uses(test),
             Self::Add(a, b)
             | Self::Subtract(a, b)
             | Self::Multiply(a, b)
             | Self::Divide(a, b)
-            | Self::Power(a, b) => a.any(test) || b.any(test),
-            Self::Call(_, arguments) => arguments.iter().any(|argument| argument.any(test)),
+            | Self::Power(a, b) => a.uses(test) || b.uses(test),
+            Self::Call(_, arguments) => arguments.iter().any(|argument| argument.uses(test)),
         }
     }
 
     /// True if the control stands in it.
     #[must_use]
     pub fn uses_control(&self) -> bool {
-        self.any(&mut |tree| matches!(tree, Self::Control))
+        self.uses(&mut |tree| matches!(tree, Self::Control))
     }
 
     /// True if the position stands in it.
     #[must_use]
     pub fn uses_position(&self) -> bool {
-        self.any(&mut |tree| matches!(tree, Self::Position))
+        self.uses(&mut |tree| matches!(tree, Self::Position))
     }
 
     /// True if an operator of a part stands in it.
     #[must_use]
     pub fn uses_operator(&self) -> bool {
-        self.any(&mut |tree| matches!(tree, Self::Operator { .. } | Self::Dot(..)))
+        self.uses(&mut |tree| matches!(tree, Self::Operator { .. } | Self::Dot(..)))
     }
 
     /// The parts whose operators stand in it, ascending, each once.
     #[must_use]
     pub fn parts(&self) -> Vec<usize> {
         let mut out = Vec::new();
-        self.any(&mut |tree| {
+        self.uses(&mut |tree| {
             match tree {
                 Self::Operator { part, .. } => out.push(*part),
                 Self::Dot(a, b) => out.extend([*a, *b]),
@@ -71,6 +71,23 @@ impl Tree {
             Self::Call(function, arguments) => {
                 Self::Call(*function, arguments.iter().map(Self::coordinate_as_position).collect())
             }
+            other => other.clone(),
+        }
+    }
+
+    /// The tree with a number in place of the position, simplified.
+    #[must_use]
+    pub fn at_position(&self, position: f64) -> Self {
+        let of = |tree: &Self| tree.at_position(position);
+        match self {
+            Self::Position => Self::Number(position),
+            Self::Negative(inner) => of(inner).negated(),
+            Self::Add(a, b) => of(a).plus(of(b)),
+            Self::Subtract(a, b) => of(a).minus(of(b)),
+            Self::Multiply(a, b) => of(a).times(of(b)),
+            Self::Divide(a, b) => of(a).over(of(b)),
+            Self::Power(a, b) => of(a).raised(of(b)),
+            Self::Call(function, arguments) => Self::Call(*function, arguments.iter().map(of).collect()),
             other => other.clone(),
         }
     }

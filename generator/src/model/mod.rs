@@ -11,6 +11,8 @@
 //!
 //! Not here: levels, series, formulas.
 
+pub mod parts;
+
 use std::rc::Rc;
 
 use nalgebra::Complex;

@@ -124,7 +124,7 @@ mod tests {
         assert_eq!(states.operator("jump", &[3, 1]).unwrap().operator, PartOperator::Jump(3, 1));
         assert!(states.operator("jump", &[3]).is_err());
         assert!(states.operator("projector", &[4]).is_err());
-        let fault = PartKind::Rotor.operator("cos3", &[]).unwrap_err();
+        let fault = PartKind::Rotor.operator("cos22", &[]).unwrap_err();
         assert_eq!(fault.action.as_deref(), Some("write `.cos2`, if that is meant"));
         for kind in [PartKind::Spin(1), PartKind::Rotor, PartKind::Oscillator, PartKind::Phase] {
             for name in kind.operator_names() {

@@ -25,7 +25,11 @@ pub fn power_of_ten(x: f64) -> Option<i32> {
         return None;
     }
     // The logarithm only guesses; the comparison decides.
-    let guess = libm::round(libm::log10(x));
+    let logarithm = libm::log10(x);
+    let guess = libm::round(logarithm);
+    if (logarithm - guess).abs() > 1e-9 {
+        return None;
+    }
     let exponent = guess as i32;
     (shift(1.0, exponent) == x).then_some(exponent)
 }

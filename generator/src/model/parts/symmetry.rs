@@ -1,0 +1,562 @@
+//! Proof that a Hamiltonian written in operators looks the same on both sides of
+//! the operating point.
+//!
+//! In: the Hamiltonian's tree, with `control = at + d`. Sought: a signed
+//! transformation of the parts, with or without reversal of time, under which
+//! every product changes by the sign `(-1)^(power of d)`. Each elementary operator
+//! changes sign or not according to a few bits per part, so a product's sign is
+//! the sum of its bits modulo 2, and the search is one linear system over the
+//! field of two elements. Nothing is compared numerically: the only arithmetic
+//! is the collecting of equal products, and a coefficient counts as zero when it
+//! is exactly zero.
+//!
+//! Not here: what follows for the levels.
+
+use std::collections::BTreeMap;
+
+use crate::expr::{Function, PartOperator, Tree};
+use crate::model::C64;
+use crate::spec::{PartKind, Parts};
+use crate::units::decimal;
+
+/// Most products before the search gives up.
+const MOST_PRODUCTS: usize = 3000;
+
+/// Highest power that is multiplied out.
+const HIGHEST_POWER: f64 = 16.0;
+
+/// Stands for scalars in a word.
+const SCALAR: usize = usize::MAX;
+
+/// A sum of unknown bits, and a known one.
+#[derive(Clone, Debug, PartialEq, Eq)]
+struct Form {
+    bits: Vec<u64>,
+    known: bool,
+}
+
+impl Form {
+    fn plus(&self, other: &Self) -> Self {
+        Self {
+            bits: self.bits.iter().zip(&other.bits).map(|(a, b)| a ^ b).collect(),
+            known: self.known ^ other.known,
+        }
+    }
+
+    fn has(&self, bit: usize) -> bool {
+        self.bits.get(bit / 64).is_some_and(|word| word >> (bit % 64) & 1 == 1)
+    }
+
+    fn is_zero(&self) -> bool {
+        !self.known && self.bits.iter().all(|word| *word == 0)
+    }
+}
+
+/// Power of d, then operators by part, each in its order; scalar functions last.
+#[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Default)]
+struct Key {
+    power: u32,
+    word: Vec<(usize, u32)>,
+}
+
+type Polynomial = BTreeMap<Key, (C64, Form)>;
+
+/// The unknown bits of one part.
+#[derive(Clone, Copy, Debug)]
+struct Bits {
+    first: usize,
+    count: usize,
+}
+
+struct Search<'a> {
+    system: &'a Parts,
+    at: f64,
+    bits: Vec<Bits>,
+    words: usize,
+    /// Bit of time reversal.
+    reversal: usize,
+    /// Per part: charges are counted from half of this (phase), positions from this (interval).
+    centres: Vec<f64>,
+    equations: Vec<Form>,
+    names: BTreeMap<String, u32>,
+}
+
+/// Codes of elementary operators in words.
+const X: u32 = 0;
+const Y: u32 = 1;
+const Z: u32 = 2;
+const P: u32 = 3;
+const NUMBER: u32 = 4;
+const RAISE: u32 = 5;
+const LOWER: u32 = 6;
+const SQ: u32 = 7;
+const COS: u32 = 8;
+const COS2: u32 = 9;
+const SIN: u32 = 10;
+/// Pairs of states and functions are numbered from here on as they come.
+const NAMED: u32 = 100;
+
+/// A product in which powers of ten move the decimal point, so that `1e-9 * 4.5`
+/// is the double that `4.5 nm` is in metres, and lengths cancel exactly.
+fn times(a: C64, b: C64) -> C64 {
+    if a.im == 0.0 && b.im == 0.0 { C64::new(decimal::product(a.re, b.re), 0.0) } else { a * b }
+}
+
+impl<'a> Search<'a> {
+    fn new(system: &'a Parts, at: f64) -> Self {
+        let mut next = 0;
+        let bits: Vec<Bits> = system
+            .parts
+            .iter()
+            .map(|part| {
+                let count = match part.kind {
+                    PartKind::Spin(_) | PartKind::Rotor | PartKind::Phase | PartKind::States(2) => 2,
+                    PartKind::Oscillator | PartKind::Interval { .. } => 1,
+                    PartKind::States(count) => count,
+                };
+                let bits = Bits { first: next, count };
+                next += count;
+                bits
+            })
+            .collect();
+        let centres = system
+            .parts
+            .iter()
+            .map(|part| match part.kind {
+                PartKind::Interval { from, to, .. } => 0.5 * (from + to),
+                _ => 0.0,
+            })
+            .collect();
+        Self {
+            system,
+            at,
+            bits,
+            words: next / 64 + 1,
+            reversal: next,
+            centres,
+            equations: Vec::new(),
+            names: BTreeMap::new(),
+        }
+    }
+
+    fn none(&self) -> Form {
+        Form { bits: vec![0; self.words], known: false }
+    }
+
+    fn form(&self, bits: &[usize]) -> Form {
+        let mut out = self.none();
+        for bit in bits {
+            if let Some(word) = out.bits.get_mut(bit / 64) {
+                *word ^= 1 << (bit % 64);
+            }
+        }
+        out
+    }
+
+    fn constant(&self, value: C64) -> Polynomial {
+        let mut out = Polynomial::new();
+        if value != C64::new(0.0, 0.0) {
+            out.insert(Key::default(), (value, self.none()));
+        }
+        out
+    }
+
+    fn atom(&self, part: usize, code: u32, coefficient: C64, form: Form) -> Polynomial {
+        BTreeMap::from([(Key { power: 0, word: vec![(part, code)] }, (coefficient, form))])
+    }
+
+    fn sum(&self, mut a: Polynomial, b: Polynomial, factor: f64) -> Option<Polynomial> {
+        for (key, (value, form)) in b {
+            let entry = a.entry(key).or_insert((C64::new(0.0, 0.0), form));
+            entry.0 += times(value, C64::new(factor, 0.0));
+        }
+        a.retain(|_, (value, _)| *value != C64::new(0.0, 0.0));
+        (a.len() <= MOST_PRODUCTS).then_some(a)
+    }
+
+    fn product(&self, a: &Polynomial, b: &Polynomial) -> Option<Polynomial> {
+        if a.len().saturating_mul(b.len()) > 4 * MOST_PRODUCTS {
+            return None;
+        }
+        let mut out = Polynomial::new();
+        for (left, (x, f)) in a {
+            for (right, (y, g)) in b {
+                let mut word = [left.word.clone(), right.word.clone()].concat();
+                // Stable, so the order inside each part stays; scalar functions commute among themselves too.
+                word.sort_by_key(|(part, code)| (*part, if *part == SCALAR { *code } else { 0 }));
+                let key = Key { power: left.power + right.power, word };
+                let entry = out.entry(key).or_insert((C64::new(0.0, 0.0), f.plus(g)));
+                entry.0 += times(*x, *y);
+            }
+        }
+        out.retain(|_, (value, _)| *value != C64::new(0.0, 0.0));
+        (out.len() <= MOST_PRODUCTS).then_some(out)
+    }
+
+    fn operator(&mut self, part: usize, operator: PartOperator) -> Option<Polynomial> {
+        let kind = self.system.parts.get(part)?.kind;
+        let Bits { first, count } = *self.bits.get(part)?;
+        let (one, i) = (C64::new(1.0, 0.0), C64::new(0.0, 1.0));
+        let t = self.reversal;
+        let spin = |search: &Self, operator: PartOperator| {
+            // Reversal turns a true spin round; two bare states it only conjugates.
+            let turned = matches!(kind, PartKind::Spin(_));
+            let (code, mut bits, odd) = match operator {
+                PartOperator::X => (X, vec![first], turned),
+                PartOperator::Y => (Y, vec![first + 1], true),
+                _ => (Z, vec![first, first + 1], turned),
+            };
+            if odd {
+                bits.push(t);
+            }
+            search.atom(part, code, one, search.form(&bits))
+        };
+        let shifted = |search: &Self, a: Polynomial, b: Polynomial, factor: C64| {
+            search.sum(a, b.into_iter().map(|(key, (x, f))| (key, (x * factor, f))).collect(), 1.0)
+        };
+        let plain =
+            |search: &Self, code: u32, bits: &[usize]| search.atom(part, code, one, search.form(bits));
+        match (kind, operator) {
+            (PartKind::Spin(_), PartOperator::X | PartOperator::Y | PartOperator::Z) => {
+                Some(spin(self, operator))
+            }
+            (PartKind::Spin(_), PartOperator::Raise | PartOperator::Lower) => {
+                let factor = if operator == PartOperator::Raise { i } else { -i };
+                shifted(self, spin(self, PartOperator::X), spin(self, PartOperator::Y), factor)
+            }
+            (PartKind::States(2), _) => {
+                let half = self.constant(C64::new(0.5, 0.0));
+                let (pair, a, b) = match operator {
+                    PartOperator::Projector(a) => (false, a, a),
+                    PartOperator::Jump(a, b) => (false, a, b),
+                    PartOperator::Couple(a, b) => (true, a, b),
+                    _ => return None,
+                };
+                let out = if a == b {
+                    shifted(self, half, spin(self, PartOperator::Z), if a == 1 { one } else { -one })?
+                } else if pair {
+                    return self.sum(Polynomial::new(), spin(self, PartOperator::X), 2.0);
+                } else {
+                    let factor = if a == 1 { i } else { -i };
+                    shifted(self, spin(self, PartOperator::X), spin(self, PartOperator::Y), factor)?
+                };
+                if pair { self.sum(Polynomial::new(), out, 2.0) } else { Some(out) }
+            }
+            (PartKind::States(_), _) => {
+                let (a, b) = match operator {
+                    PartOperator::Projector(a) => (a, a),
+                    PartOperator::Jump(a, b) | PartOperator::Couple(a, b) => (a, b),
+                    _ => return None,
+                };
+                let bits = if a == b { vec![] } else { vec![first + a - 1, first + b - 1] };
+                if a == 0 || b == 0 || a > count || b > count {
+                    return None;
+                }
+                let code = self.named(format!("{operator:?}"));
+                Some(plain(self, code, &bits))
+            }
+            (PartKind::Rotor, PartOperator::Cos) => Some(plain(self, COS, &[first])),
+            (PartKind::Rotor, PartOperator::Cos2) => Some(plain(self, COS2, &[])),
+            (PartKind::Rotor, PartOperator::Z) => Some(plain(self, Z, &[first + 1, t])),
+            (PartKind::Rotor | PartKind::Spin(_), PartOperator::Sq) => Some(plain(self, SQ, &[])),
+            (PartKind::Oscillator, PartOperator::X) => Some(plain(self, X, &[first])),
+            (PartKind::Oscillator, PartOperator::P) => Some(plain(self, P, &[first, t])),
+            (PartKind::Oscillator, PartOperator::Raise) => Some(plain(self, RAISE, &[first])),
+            (PartKind::Oscillator, PartOperator::Lower) => Some(plain(self, LOWER, &[first])),
+            (PartKind::Oscillator, PartOperator::Number) => Some(plain(self, NUMBER, &[])),
+            (PartKind::Phase, PartOperator::Cos) => Some(plain(self, COS, &[first + 1])),
+            (PartKind::Phase, PartOperator::Sin) => Some(plain(self, SIN, &[first, first + 1, t])),
+            (PartKind::Phase, PartOperator::Number) => {
+                let centre = self.constant(C64::new(0.5 * self.centres.get(part)?, 0.0));
+                self.sum(plain(self, NUMBER, &[first]), centre, 1.0)
+            }
+            (PartKind::Interval { .. }, PartOperator::X) => {
+                let centre = self.constant(C64::new(*self.centres.get(part)?, 0.0));
+                self.sum(plain(self, X, &[first]), centre, 1.0)
+            }
+            (PartKind::Interval { .. }, PartOperator::P) => Some(plain(self, P, &[first, t])),
+            _ => None,
+        }
+    }
+
+    fn named(&mut self, name: String) -> u32 {
+        let next = NAMED + self.names.len() as u32;
+        *self.names.entry(name).or_insert(next)
+    }
+
+    /// The common form of all products, demanded by equations; 0 for nothing at all.
+    fn uniform(&mut self, polynomial: &Polynomial) -> Form {
+        let mut first: Option<Form> = None;
+        for (key, (_, form)) in polynomial {
+            let mut form = form.clone();
+            form.known ^= key.power % 2 == 1;
+            match &first {
+                None => first = Some(form),
+                Some(first) => self.equations.push(first.plus(&form)),
+            }
+        }
+        first.unwrap_or_else(|| self.none())
+    }
+
+    /// An opaque real factor made of `trees`, with its form.
+    fn opaque(&mut self, tree: &Tree, form: Form) -> Polynomial {
+        let part = tree.parts().first().copied().unwrap_or(SCALAR);
+        let code = self.named(format!("{tree:?}"));
+        self.atom(part, code, C64::new(1.0, 0.0), form)
+    }
+
+    fn polynomial(&mut self, tree: &Tree) -> Option<Polynomial> {
+        match tree {
+            Tree::Number(value) => Some(self.constant(C64::new(*value, 0.0))),
+            Tree::Control => {
+                let mut out = self.constant(C64::new(self.at, 0.0));
+                out.insert(Key { power: 1, word: Vec::new() }, (C64::new(1.0, 0.0), self.none()));
+                Some(out)
+            }
+            Tree::Position => None,
+            Tree::Operator { part, operator } => self.operator(*part, *operator),
+            Tree::Dot(a, b) => {
+                let mut out = Polynomial::new();
+                for operator in [PartOperator::X, PartOperator::Y, PartOperator::Z] {
+                    let (left, right) = (self.operator(*a, operator)?, self.operator(*b, operator)?);
+                    out = self.sum(out, self.product(&left, &right)?, 1.0)?;
+                }
+                Some(out)
+            }
+            Tree::Negative(inner) => {
+                let inner = self.polynomial(inner)?;
+                self.sum(Polynomial::new(), inner, -1.0)
+            }
+            Tree::Add(a, b) => {
+                let (a, b) = (self.polynomial(a)?, self.polynomial(b)?);
+                self.sum(a, b, 1.0)
+            }
+            Tree::Subtract(a, b) => {
+                let (a, b) = (self.polynomial(a)?, self.polynomial(b)?);
+                self.sum(a, b, -1.0)
+            }
+            Tree::Multiply(a, b) => {
+                let (a, b) = (self.polynomial(a)?, self.polynomial(b)?);
+                self.product(&a, &b)
+            }
+            Tree::Divide(a, b) => {
+                let above = self.polynomial(a)?;
+                if let Some(value) = b.as_number() {
+                    let inverse = decimal::quotient(1.0, value);
+                    return self.sum(Polynomial::new(), above, inverse);
+                }
+                let below = self.polynomial(b)?;
+                let form = self.uniform(&below);
+                let inverse = self.opaque(&Tree::Number(1.0).over((**b).clone()), form);
+                self.product(&above, &inverse)
+            }
+            Tree::Power(base, exponent) => {
+                let below = self.polynomial(base)?;
+                match exponent.as_number() {
+                    Some(n) if libm::floor(n) == n && (0.0..=HIGHEST_POWER).contains(&n) => {
+                        let mut out = self.constant(C64::new(1.0, 0.0));
+                        for _ in 0..n as usize {
+                            out = self.product(&out, &below)?;
+                        }
+                        Some(out)
+                    }
+                    Some(n) if libm::floor(n) == n => {
+                        let form = self.uniform(&below);
+                        let odd = libm::fmod(n, 2.0) != 0.0;
+                        let form = if odd { form } else { self.none() };
+                        Some(self.opaque(tree, form))
+                    }
+                    _ => {
+                        let exponent = self.polynomial(exponent)?;
+                        for side in [&below, &exponent] {
+                            let form = self.uniform(side);
+                            self.equations.push(form);
+                        }
+                        let none = self.none();
+                        Some(self.opaque(tree, none))
+                    }
+                }
+            }
+            Tree::Call(function, arguments) => {
+                let mut form = self.none();
+                for argument in arguments {
+                    let inner = self.polynomial(argument)?;
+                    let of = self.uniform(&inner);
+                    match function {
+                        Function::Sin | Function::Tan | Function::Sinh | Function::Tanh => form = of,
+                        Function::Cos | Function::Cosh | Function::Abs => {}
+                        _ => self.equations.push(of),
+                    }
+                }
+                Some(self.opaque(tree, form))
+            }
+        }
+    }
+
+    /// Demands that every product keeps its sign, the power of d counted in.
+    fn demand(&mut self, polynomial: &Polynomial) {
+        for (key, (value, form)) in polynomial {
+            let mut form = form.clone();
+            form.known ^= key.power % 2 == 1;
+            let reversal = self.form(&[self.reversal]);
+            if value.im != 0.0 {
+                form = form.plus(&reversal);
+                if value.re != 0.0 {
+                    // A complex coefficient survives no reversal.
+                    self.equations.push(reversal);
+                }
+            }
+            self.equations.push(form);
+        }
+    }
+
+    /// A solution of all equations, bits as true or false; `None` if there is none.
+    fn solve(&self, without_reversal: bool) -> Option<Vec<bool>> {
+        let unknowns = self.reversal + 1;
+        let mut rows = self.equations.clone();
+        if without_reversal {
+            rows.push(self.form(&[self.reversal]));
+        }
+        let mut pivots: Vec<(usize, Form)> = Vec::new();
+        for mut row in rows {
+            for (bit, pivot) in &pivots {
+                if row.has(*bit) {
+                    row = row.plus(pivot);
+                }
+            }
+            if let Some(bit) = (0..unknowns).find(|bit| row.has(*bit)) {
+                for (_, pivot) in &mut pivots {
+                    if pivot.has(bit) {
+                        *pivot = pivot.plus(&row);
+                    }
+                }
+                pivots.push((bit, row));
+            } else if !row.is_zero() {
+                return None;
+            }
+        }
+        // Unknowns without a pivot are free and stay off.
+        let mut out = vec![false; unknowns];
+        for (bit, pivot) in &pivots {
+            if let Some(slot) = out.get_mut(*bit) {
+                *slot = pivot.known;
+            }
+        }
+        Some(out)
+    }
+
+    /// The transformation in words.
+    fn describe(&self, solution: &[bool]) -> String {
+        let mut words = Vec::new();
+        let on = |bit: usize| solution.get(bit).copied().unwrap_or(false);
+        for (idx, (part, bits)) in self.system.parts.iter().zip(&self.bits).enumerate() {
+            let name = &part.name;
+            let flags: Vec<bool> = (0..bits.count).map(|bit| on(bits.first + bit)).collect();
+            let text = match (part.kind, flags.as_slice()) {
+                (PartKind::Spin(_), [true, true]) => format!("{name} turned by pi about z"),
+                (PartKind::Spin(_), [false, true]) => format!("{name} turned by pi about x"),
+                (PartKind::Spin(_), [true, false]) => format!("{name} turned by pi about y"),
+                (PartKind::States(2), [true, true]) => format!("the sign of one state of {name}"),
+                (PartKind::States(2), [false, true]) => format!("the two states of {name} exchanged"),
+                (PartKind::States(2), [true, false]) => {
+                    format!("the two states of {name} exchanged, one with its sign")
+                }
+                (PartKind::Rotor, [true, false]) => format!("(-1)^J of {name}"),
+                (PartKind::Rotor, [false, true]) => format!("{name} mirrored, M to -M"),
+                (PartKind::Rotor, [true, true]) => format!("(-1)^J of {name} and M to -M"),
+                (PartKind::Oscillator, [true]) => format!("(-1)^n of {name}"),
+                (PartKind::Interval { .. }, [true]) => format!("{name} mirrored about its middle"),
+                (PartKind::Phase, [reflected, alternating]) if *reflected || *alternating => {
+                    let centre = self.centres.get(idx).copied().unwrap_or(0.0);
+                    let mut text = Vec::new();
+                    if *reflected {
+                        text.push(if centre == 0.0 {
+                            format!("n to -n of {name}")
+                        } else {
+                            format!("n to {centre} - n of {name}")
+                        });
+                    }
+                    if *alternating {
+                        text.push(format!("(-1)^n of {name}"));
+                    }
+                    text.join(" and ")
+                }
+                (PartKind::States(_), flags) if flags.contains(&true) => format!("signs of states of {name}"),
+                _ => continue,
+            };
+            words.push(text);
+        }
+        if on(self.reversal) {
+            words.push("reversal of time".to_owned());
+        }
+        if words.is_empty() { "no change at all".to_owned() } else { words.join(", ") }
+    }
+}
+
+/// Twice the charge about which a phase's Hamiltonian is centred at the operating
+/// point, for every part (0 for other kinds): minus the coefficient of the number
+/// over that of its square.
+pub(super) fn charge_centres(system: &Parts, at: f64) -> Vec<i64> {
+    let mut search = Search::new(system, at);
+    let polynomial = search.polynomial(&system.hamiltonian);
+    let coefficient = |part: usize, count: usize| {
+        let key = Key { power: 0, word: vec![(part, NUMBER); count] };
+        polynomial.as_ref().and_then(|polynomial| polynomial.get(&key)).map_or(0.0, |(value, _)| value.re)
+    };
+    system
+        .parts
+        .iter()
+        .enumerate()
+        .map(|(part, one)| {
+            let (linear, square) = (coefficient(part, 1), coefficient(part, 2));
+            let twice = libm::round(-linear / square);
+            if one.kind == PartKind::Phase && twice.abs() < 1e6 { twice as i64 } else { 0 }
+        })
+        .collect()
+}
+
+/// Why the Hamiltonian at `at + d` and at `at - d` are the same up to a signed
+/// transformation that leaves the block as it is: a sentence, or `None` if none was
+/// found.
+///
+/// - `centres`: from [`charge_centres`];
+/// - `block`: operators whose value selects the block, with that value.
+pub(super) fn parity(system: &Parts, at: f64, centres: &[i64], block: &[(&Tree, f64)]) -> Option<String> {
+    let mut search = Search::new(system, at);
+    for (slot, (part, centre)) in search.centres.iter_mut().zip(system.parts.iter().zip(centres)) {
+        if part.kind == PartKind::Phase {
+            *slot = *centre as f64;
+        }
+    }
+    for (idx, (part, centre)) in system.parts.iter().zip(centres).enumerate() {
+        // A range of charges that the spec fixes may lie askew about the centre.
+        if part.kind == PartKind::Phase
+            && part.size.is_some_and(|size| (size % 2 == 0) != (centre % 2 != 0))
+            && let Some(bits) = search.bits.get(idx)
+        {
+            let reflected = search.form(&[bits.first]);
+            search.equations.push(reflected);
+        }
+    }
+    let polynomial = search.polynomial(&system.hamiltonian)?;
+    search.demand(&polynomial);
+    for (operator, value) in block {
+        let polynomial = search.polynomial(operator)?;
+        if *value == 0.0 {
+            // The block of value 0 stays itself where the operator as a whole changes sign.
+            let form = search.uniform(&polynomial);
+            let _ = form;
+            if polynomial.values().any(|(value, _)| value.im != 0.0) {
+                let reversal = search.form(&[search.reversal]);
+                search.equations.push(reversal);
+            }
+        } else {
+            search.demand(&polynomial);
+        }
+    }
+    let solution = search.solve(true).or_else(|| search.solve(false))?;
+    Some(format!(
+        "the Hamiltonian is the same on both sides of the operating point, under {}",
+        search.describe(&solution)
+    ))
+}
