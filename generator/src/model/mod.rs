@@ -67,7 +67,9 @@ pub trait Model<T: Scalar> {
 
     /// Why `P H(at + d) P = H(at - d)` for a parity `P`, proved from the given
     /// numbers to the last bit: a sentence for the reader. `None` if no such
-    /// parity was found.
+    /// parity was found. `P` keeps the block; it may reverse time. So the levels of
+    /// the block, as a set, are even in `d`, and so is each that is not degenerate at
+    /// the operating point; of degenerate ones nothing follows singly.
     fn parity(&self) -> Option<String> {
         None
     }

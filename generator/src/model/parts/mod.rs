@@ -24,7 +24,7 @@ mod sparse;
 mod symmetry;
 mod terms;
 #[cfg(test)]
-mod tests;
+pub(crate) mod tests;
 mod words;
 
 use std::rc::Rc;

@@ -10,7 +10,7 @@ use crate::spec::{Kind, Part, PartKind};
 use crate::units::{EnergyKind, Fault, Unit};
 
 /// A spec in miniature: parts, constants and the control by their texts.
-pub(super) struct Sketch {
+pub(crate) struct Sketch {
     pub parts: Vec<(&'static str, PartKind, Option<usize>)>,
     pub constants: Vec<(&'static str, &'static str)>,
     pub control: (&'static str, &'static str),
@@ -97,7 +97,7 @@ impl Sketch {
     }
 }
 
-pub(super) fn levels(built: &Built, control: f64) -> Vec<f64> {
+pub(crate) fn levels(built: &Built, control: f64) -> Vec<f64> {
     match &built.model {
         AnyModel::Real(model) => {
             spectrum(&model.hamiltonian(control)).unwrap().iter().map(|pair| pair.energy).collect()

@@ -1,16 +1,5 @@
-//! Proof that a Hamiltonian written in operators looks the same on both sides of
-//! the operating point.
-//!
-//! In: the Hamiltonian's tree, with `control = at + d`. Sought: a signed
-//! transformation of the parts, with or without reversal of time, under which
-//! every product changes by the sign `(-1)^(power of d)`. Each elementary operator
-//! changes sign or not according to a few bits per part, so a product's sign is
-//! the sum of its bits modulo 2, and the search is one linear system over the
-//! field of two elements. Nothing is compared numerically: the only arithmetic
-//! is the collecting of equal products, and a coefficient counts as zero when it
-//! is exactly zero.
-//!
-//! Not here: what follows for the levels.
+//! Operators as sums of products whose sign under a transformation is a sum of
+//! bits modulo 2.
 
 use std::collections::BTreeMap;
 
@@ -30,54 +19,54 @@ const SCALAR: usize = usize::MAX;
 
 /// A sum of unknown bits, and a known one.
 #[derive(Clone, Debug, PartialEq, Eq)]
-struct Form {
+pub(super) struct Form {
     bits: Vec<u64>,
-    known: bool,
+    pub known: bool,
 }
 
 impl Form {
-    fn plus(&self, other: &Self) -> Self {
+    pub fn plus(&self, other: &Self) -> Self {
         Self {
             bits: self.bits.iter().zip(&other.bits).map(|(a, b)| a ^ b).collect(),
             known: self.known ^ other.known,
         }
     }
 
-    fn has(&self, bit: usize) -> bool {
+    pub fn has(&self, bit: usize) -> bool {
         self.bits.get(bit / 64).is_some_and(|word| word >> (bit % 64) & 1 == 1)
     }
 
-    fn is_zero(&self) -> bool {
+    pub fn is_zero(&self) -> bool {
         !self.known && self.bits.iter().all(|word| *word == 0)
     }
 }
 
 /// Power of d, then operators by part, each in its order; scalar functions last.
 #[derive(Clone, Debug, PartialEq, Eq, PartialOrd, Ord, Default)]
-struct Key {
-    power: u32,
-    word: Vec<(usize, u32)>,
+pub(super) struct Key {
+    pub power: u32,
+    pub word: Vec<(usize, u32)>,
 }
 
-type Polynomial = BTreeMap<Key, (C64, Form)>;
+pub(super) type Polynomial = BTreeMap<Key, (C64, Form)>;
 
 /// The unknown bits of one part.
 #[derive(Clone, Copy, Debug)]
-struct Bits {
-    first: usize,
-    count: usize,
+pub(super) struct Bits {
+    pub first: usize,
+    pub count: usize,
 }
 
-struct Search<'a> {
-    system: &'a Parts,
+pub(super) struct Search<'a> {
+    pub system: &'a Parts,
     at: f64,
-    bits: Vec<Bits>,
+    pub bits: Vec<Bits>,
     words: usize,
     /// Bit of time reversal.
-    reversal: usize,
+    pub reversal: usize,
     /// Per part: charges are counted from half of this (phase), positions from this (interval).
-    centres: Vec<f64>,
-    equations: Vec<Form>,
+    pub centres: Vec<f64>,
+    pub equations: Vec<Form>,
     names: BTreeMap<String, u32>,
 }
 
@@ -86,7 +75,7 @@ const X: u32 = 0;
 const Y: u32 = 1;
 const Z: u32 = 2;
 const P: u32 = 3;
-const NUMBER: u32 = 4;
+pub(super) const NUMBER: u32 = 4;
 const RAISE: u32 = 5;
 const LOWER: u32 = 6;
 const SQ: u32 = 7;
@@ -103,7 +92,7 @@ fn times(a: C64, b: C64) -> C64 {
 }
 
 impl<'a> Search<'a> {
-    fn new(system: &'a Parts, at: f64) -> Self {
+    pub(super) fn new(system: &'a Parts, at: f64) -> Self {
         let mut next = 0;
         let bits: Vec<Bits> = system
             .parts
@@ -139,11 +128,11 @@ impl<'a> Search<'a> {
         }
     }
 
-    fn none(&self) -> Form {
+    pub(super) fn none(&self) -> Form {
         Form { bits: vec![0; self.words], known: false }
     }
 
-    fn form(&self, bits: &[usize]) -> Form {
+    pub(super) fn form(&self, bits: &[usize]) -> Form {
         let mut out = self.none();
         for bit in bits {
             if let Some(word) = out.bits.get_mut(bit / 64) {
@@ -285,7 +274,7 @@ impl<'a> Search<'a> {
     }
 
     /// The common form of all products, demanded by equations; 0 for nothing at all.
-    fn uniform(&mut self, polynomial: &Polynomial) -> Form {
+    pub(super) fn uniform(&mut self, polynomial: &Polynomial) -> Form {
         let mut first: Option<Form> = None;
         for (key, (_, form)) in polynomial {
             let mut form = form.clone();
@@ -305,7 +294,7 @@ impl<'a> Search<'a> {
         self.atom(part, code, C64::new(1.0, 0.0), form)
     }
 
-    fn polynomial(&mut self, tree: &Tree) -> Option<Polynomial> {
+    pub(super) fn polynomial(&mut self, tree: &Tree) -> Option<Polynomial> {
         match tree {
             Tree::Number(value) => Some(self.constant(C64::new(*value, 0.0))),
             Tree::Control => {
@@ -394,7 +383,7 @@ impl<'a> Search<'a> {
     }
 
     /// Demands that every product keeps its sign, the power of d counted in.
-    fn demand(&mut self, polynomial: &Polynomial) {
+    pub(super) fn demand(&mut self, polynomial: &Polynomial) {
         for (key, (value, form)) in polynomial {
             let mut form = form.clone();
             form.known ^= key.power % 2 == 1;
@@ -409,154 +398,4 @@ impl<'a> Search<'a> {
             self.equations.push(form);
         }
     }
-
-    /// A solution of all equations, bits as true or false; `None` if there is none.
-    fn solve(&self, without_reversal: bool) -> Option<Vec<bool>> {
-        let unknowns = self.reversal + 1;
-        let mut rows = self.equations.clone();
-        if without_reversal {
-            rows.push(self.form(&[self.reversal]));
-        }
-        let mut pivots: Vec<(usize, Form)> = Vec::new();
-        for mut row in rows {
-            for (bit, pivot) in &pivots {
-                if row.has(*bit) {
-                    row = row.plus(pivot);
-                }
-            }
-            if let Some(bit) = (0..unknowns).find(|bit| row.has(*bit)) {
-                for (_, pivot) in &mut pivots {
-                    if pivot.has(bit) {
-                        *pivot = pivot.plus(&row);
-                    }
-                }
-                pivots.push((bit, row));
-            } else if !row.is_zero() {
-                return None;
-            }
-        }
-        // Unknowns without a pivot are free and stay off.
-        let mut out = vec![false; unknowns];
-        for (bit, pivot) in &pivots {
-            if let Some(slot) = out.get_mut(*bit) {
-                *slot = pivot.known;
-            }
-        }
-        Some(out)
-    }
-
-    /// The transformation in words.
-    fn describe(&self, solution: &[bool]) -> String {
-        let mut words = Vec::new();
-        let on = |bit: usize| solution.get(bit).copied().unwrap_or(false);
-        for (idx, (part, bits)) in self.system.parts.iter().zip(&self.bits).enumerate() {
-            let name = &part.name;
-            let flags: Vec<bool> = (0..bits.count).map(|bit| on(bits.first + bit)).collect();
-            let text = match (part.kind, flags.as_slice()) {
-                (PartKind::Spin(_), [true, true]) => format!("{name} turned by pi about z"),
-                (PartKind::Spin(_), [false, true]) => format!("{name} turned by pi about x"),
-                (PartKind::Spin(_), [true, false]) => format!("{name} turned by pi about y"),
-                (PartKind::States(2), [true, true]) => format!("the sign of one state of {name}"),
-                (PartKind::States(2), [false, true]) => format!("the two states of {name} exchanged"),
-                (PartKind::States(2), [true, false]) => {
-                    format!("the two states of {name} exchanged, one with its sign")
-                }
-                (PartKind::Rotor, [true, false]) => format!("(-1)^J of {name}"),
-                (PartKind::Rotor, [false, true]) => format!("{name} mirrored, M to -M"),
-                (PartKind::Rotor, [true, true]) => format!("(-1)^J of {name} and M to -M"),
-                (PartKind::Oscillator, [true]) => format!("(-1)^n of {name}"),
-                (PartKind::Interval { .. }, [true]) => format!("{name} mirrored about its middle"),
-                (PartKind::Phase, [reflected, alternating]) if *reflected || *alternating => {
-                    let centre = self.centres.get(idx).copied().unwrap_or(0.0);
-                    let mut text = Vec::new();
-                    if *reflected {
-                        text.push(if centre == 0.0 {
-                            format!("n to -n of {name}")
-                        } else {
-                            format!("n to {centre} - n of {name}")
-                        });
-                    }
-                    if *alternating {
-                        text.push(format!("(-1)^n of {name}"));
-                    }
-                    text.join(" and ")
-                }
-                (PartKind::States(_), flags) if flags.contains(&true) => format!("signs of states of {name}"),
-                _ => continue,
-            };
-            words.push(text);
-        }
-        if on(self.reversal) {
-            words.push("reversal of time".to_owned());
-        }
-        if words.is_empty() { "no change at all".to_owned() } else { words.join(", ") }
-    }
-}
-
-/// Twice the charge about which a phase's Hamiltonian is centred at the operating
-/// point, for every part (0 for other kinds): minus the coefficient of the number
-/// over that of its square.
-pub(super) fn charge_centres(system: &Parts, at: f64) -> Vec<i64> {
-    let mut search = Search::new(system, at);
-    let polynomial = search.polynomial(&system.hamiltonian);
-    let coefficient = |part: usize, count: usize| {
-        let key = Key { power: 0, word: vec![(part, NUMBER); count] };
-        polynomial.as_ref().and_then(|polynomial| polynomial.get(&key)).map_or(0.0, |(value, _)| value.re)
-    };
-    system
-        .parts
-        .iter()
-        .enumerate()
-        .map(|(part, one)| {
-            let (linear, square) = (coefficient(part, 1), coefficient(part, 2));
-            let twice = libm::round(-linear / square);
-            if one.kind == PartKind::Phase && twice.abs() < 1e6 { twice as i64 } else { 0 }
-        })
-        .collect()
-}
-
-/// Why the Hamiltonian at `at + d` and at `at - d` are the same up to a signed
-/// transformation that leaves the block as it is: a sentence, or `None` if none was
-/// found.
-///
-/// - `centres`: from [`charge_centres`];
-/// - `block`: operators whose value selects the block, with that value.
-pub(super) fn parity(system: &Parts, at: f64, centres: &[i64], block: &[(&Tree, f64)]) -> Option<String> {
-    let mut search = Search::new(system, at);
-    for (slot, (part, centre)) in search.centres.iter_mut().zip(system.parts.iter().zip(centres)) {
-        if part.kind == PartKind::Phase {
-            *slot = *centre as f64;
-        }
-    }
-    for (idx, (part, centre)) in system.parts.iter().zip(centres).enumerate() {
-        // A range of charges that the spec fixes may lie askew about the centre.
-        if part.kind == PartKind::Phase
-            && part.size.is_some_and(|size| (size % 2 == 0) != (centre % 2 != 0))
-            && let Some(bits) = search.bits.get(idx)
-        {
-            let reflected = search.form(&[bits.first]);
-            search.equations.push(reflected);
-        }
-    }
-    let polynomial = search.polynomial(&system.hamiltonian)?;
-    search.demand(&polynomial);
-    for (operator, value) in block {
-        let polynomial = search.polynomial(operator)?;
-        if *value == 0.0 {
-            // The block of value 0 stays itself where the operator as a whole changes sign.
-            let form = search.uniform(&polynomial);
-            let _ = form;
-            if polynomial.values().any(|(value, _)| value.im != 0.0) {
-                let reversal = search.form(&[search.reversal]);
-                search.equations.push(reversal);
-            }
-        } else {
-            search.demand(&polynomial);
-        }
-    }
-    let solution = search.solve(true).or_else(|| search.solve(false))?;
-    Some(format!(
-        "the Hamiltonian is the same on both sides of the operating point, under {}",
-        search.describe(&solution)
-    ))
 }
