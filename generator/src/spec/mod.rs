@@ -168,7 +168,7 @@ pub struct Part {
     pub name: String,
     /// What it is.
     pub kind: PartKind,
-    /// Fixed number of basis states, where given.
+    /// Fixed number of basis states, where given; a rotor counts values of J, each with all its M.
     pub size: Option<usize>,
     /// Place in the spec.
     pub place: Place,

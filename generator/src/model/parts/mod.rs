@@ -115,7 +115,7 @@ struct Problem<'a> {
     terms: Vec<Vec<Product>>,
     /// Conserved operators, multiplied out.
     conserved: Vec<Vec<Product>>,
-    /// Commutators of conserved operators (first) with written terms (second), multiplied out.
+    expander: Expander<'a>,
     demands: size::Demands,
     centres: Vec<i64>,
     trees: Vec<Tree>,
@@ -123,7 +123,7 @@ struct Problem<'a> {
 
 impl<'a> Problem<'a> {
     fn new(system: &'a System, parts: &'a Parts, request: &'a Request<'a>) -> Result<Self> {
-        let expander = Expander { system: parts };
+        let mut expander = Expander::new(parts);
         let trees = Expander::written_terms(&parts.hamiltonian);
         let terms =
             trees.iter().map(|tree| Ok(expander.expand(tree)?.products)).collect::<Result<Vec<_>>>()?;
@@ -132,26 +132,9 @@ impl<'a> Problem<'a> {
             .iter()
             .map(|(_, tree, _)| Ok(expander.expand(tree)?.products))
             .collect::<Result<Vec<_>>>()?;
-        let demands = size::Demands::of(parts, terms.iter().chain(&conserved));
+        let demands = size::Demands::of(parts, &expander, &terms, &conserved);
         let centres = symmetry::charge_centres(parts, request.at);
-        let out = Self { system, parts, request, terms, conserved, demands, centres, trees };
-        out.check_analytic()?;
-        Ok(out)
-    }
-
-    fn check_analytic(&self) -> Result<()> {
-        let at = self.request.at;
-        for product in self.terms.iter().flatten() {
-            let finite = product.number.is_finite()
-                && product
-                    .coefficient
-                    .as_ref()
-                    .is_none_or(|tree| tree.taylor(at, f64::NAN).iter().all(|c| c.is_finite()));
-            if !finite {
-                return Err(not_analytic(self.parts, at));
-            }
-        }
-        Ok(())
+        Ok(Self { system, parts, request, terms, conserved, expander, demands, centres, trees })
     }
 
     fn extents(&self, refinement: usize) -> Vec<local::Extent> {
@@ -175,9 +158,17 @@ impl<'a> Problem<'a> {
     }
 
     fn attempt(&self, refinement: usize) -> Result<Attempt> {
-        let total = self
-            .product_states(refinement)
-            .ok_or_else(|| self.too_large(&format!("more than {MOST_PRODUCT_STATES} product states")))?;
+        let total = self.product_states(refinement).ok_or_else(|| {
+            let sizes = self.extents(refinement);
+            let sizes = self
+                .parts
+                .parts
+                .iter()
+                .zip(sizes)
+                .map(|(part, extent)| size::describe(part, &extent))
+                .collect::<Vec<_>>();
+            self.too_large(&sizes.join(", "))
+        })?;
         if total > MOST_STATES && self.request.block.is_empty() {
             return Err(self.too_large(&format!("{total} product states")));
         }
@@ -234,7 +225,7 @@ impl<'a> Problem<'a> {
         let mut out = Vec::new();
         for ((name, tree, place), products) in self.parts.conserved.iter().zip(&self.conserved) {
             let mut matrix = Sparse::zero(all.len());
-            for group in space.assemble(products, all, &mut |_, _, _| {})? {
+            for group in space.assemble(&self.expander, products, all, &mut |_, _, _| {})? {
                 matrix = matrix.plus(&group.matrix);
             }
             out.push(Conserved::new(name, tree, place, matrix)?);
@@ -280,7 +271,7 @@ impl<'a> Problem<'a> {
                 (of(a) - of(b)).abs()
             })
         };
-        let groups = space.assemble(products, states, &mut |inside, outside, x| {
+        let groups = space.assemble(&self.expander, products, states, &mut |inside, outside, x| {
             for (most, one) in leaving.iter_mut().zip(conserved) {
                 *most = most.max(modulus(x) * step(one, inside, outside));
             }
@@ -295,11 +286,13 @@ impl<'a> Problem<'a> {
                     }
                 }
             } else if let Some(tree) = self.trees.get(idx) {
-                let expander = Expander { system: self.parts };
+                let mut expander = self.expander.clone();
                 let commutator =
                     one.tree.clone().times(tree.clone()).minus(tree.clone().times(one.tree.clone()));
                 let products = expander.expand(&commutator)?.products;
-                for group in space.assemble(&products, states, &mut |_, _, x| size = size.max(modulus(x)))? {
+                for group in space
+                    .assemble(&expander, &products, states, &mut |_, _, x| size = size.max(modulus(x)))?
+                {
                     size = size.max(group.matrix.largest());
                 }
             }

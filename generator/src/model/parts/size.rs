@@ -5,8 +5,15 @@
 //! infinite parts stay quick.
 
 use super::local::Extent;
-use super::words::{self, Product};
-use crate::spec::{PartKind, Parts};
+use super::words::{self, Expander, Product};
+use crate::spec::{Part, PartKind, Parts};
+
+/// Most polynomials between walls: beyond, rounding of the second derivative costs
+/// more than they gain.
+const MOST_POLYNOMIALS: usize = 400;
+
+/// Most states of a part of which functions are taken; their matrices are full.
+const MOST_WITH_FUNCTIONS: usize = 800;
 
 /// What the Hamiltonian asks of each part.
 #[derive(Clone, Debug)]
@@ -16,17 +23,25 @@ pub(super) struct Demands {
 }
 
 impl Demands {
-    pub fn of<'a>(parts: &Parts, sums: impl Iterator<Item = &'a Vec<Product>>) -> Self {
+    /// Commutators of both kinds of sums are formed too, so their reaches add.
+    pub fn of(
+        parts: &Parts,
+        expander: &Expander<'_>,
+        terms: &[Vec<Product>],
+        conserved: &[Vec<Product>],
+    ) -> Self {
         let mut out = Self { reach: vec![0; parts.parts.len()], functions: vec![false; parts.parts.len()] };
-        for product in sums.flatten() {
-            for (part, word) in &product.words {
-                if let (Some(reach), Some(functions)) =
-                    (out.reach.get_mut(*part), out.functions.get_mut(*part))
+        for sums in [terms, conserved] {
+            let mut longest = vec![0; parts.parts.len()];
+            for (part, word) in sums.iter().flatten().flat_map(|product| &product.words) {
+                let word = expander.word(word);
+                if let (Some(reach), Some(functions)) = (longest.get_mut(*part), out.functions.get_mut(*part))
                 {
-                    *reach = (*reach).max(words::reach(word));
-                    *functions |= words::has_function(word);
+                    *reach = words::reach(&word).max(*reach);
+                    *functions |= words::has_function(&word);
                 }
             }
+            out.reach.iter_mut().zip(longest).for_each(|(sum, own)| *sum += own);
         }
         out
     }
@@ -91,9 +106,27 @@ pub(super) fn extents(
         .collect()
 }
 
-/// Number of product states, `None` if it overflows.
+/// A part's size in words.
+pub(super) fn describe(part: &Part, extent: &Extent) -> String {
+    match part.kind {
+        PartKind::Spin(twice) => format!("{} states of `{}`", twice.saturating_add(1), part.name),
+        PartKind::States(count) => format!("{count} states of `{}`", part.name),
+        PartKind::Rotor => format!("{} values of J of `{}`", extent.kept, part.name),
+        _ => format!("{} states of `{}`", extent.kept, part.name),
+    }
+}
+
+/// Number of product states, `None` if it overflows or one part alone is too large.
 pub(super) fn product_states(parts: &Parts, extents: &[Extent]) -> Option<usize> {
     parts.parts.iter().zip(extents).try_fold(1usize, |total, (part, extent)| {
+        let most = match part.kind {
+            PartKind::Interval { .. } => MOST_POLYNOMIALS,
+            _ if extent.functions => MOST_WITH_FUNCTIONS,
+            _ => usize::MAX,
+        };
+        if extent.kept > most {
+            return None;
+        }
         let own = match part.kind {
             PartKind::Spin(twice) => twice.checked_add(1)?,
             PartKind::States(count) => count,

@@ -7,7 +7,7 @@ use std::collections::BTreeMap;
 
 use super::local::Local;
 use super::sparse::{RowSum, Sparse};
-use super::words::{Atom, Product};
+use super::words::{Atom, Expander, Product};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::expr::{PartOperator, Tree};
 use crate::model::C64;
@@ -79,6 +79,7 @@ impl Space {
     /// If there are too many elements or coefficients.
     pub fn assemble(
         &self,
+        expander: &Expander<'_>,
         products: &[Product],
         states: &[usize],
         outside: &mut dyn FnMut(usize, usize, C64),
@@ -86,7 +87,7 @@ impl Space {
         let mut order: Vec<Option<Tree>> = Vec::new();
         let mut groups: BTreeMap<String, (usize, Vec<Formed>)> = BTreeMap::new();
         for product in products {
-            for (coefficient, formed) in self.formed(product)? {
+            for (coefficient, formed) in self.formed(expander, product)? {
                 let key = format!("{coefficient:?}");
                 let next = order.len();
                 let entry = groups.entry(key).or_insert_with(|| {
@@ -167,15 +168,15 @@ impl Space {
 
     /// A product's words as matrices in the kept bases; a function of coordinate and
     /// control becomes one product per node of its quadrature.
-    fn formed(&self, product: &Product) -> Result<Vec<(Option<Tree>, Formed)>> {
+    fn formed(&self, expander: &Expander<'_>, product: &Product) -> Result<Vec<(Option<Tree>, Formed)>> {
         let mut out = vec![(
-            product.coefficient.clone(),
+            expander.coefficient(&product.scalars),
             Formed { number: product.number, matrices: vec![None; self.locals.len()] },
         )];
         for (part, word) in &product.words {
             let local = self.locals.get(*part).ok_or_else(|| Error::internal("a word of no part"))?;
             let mut next = Vec::new();
-            for (scalar, matrix) in word_matrices(local, word)? {
+            for (scalar, matrix) in word_matrices(local, &expander.word(word))? {
                 for (coefficient, formed) in &out {
                     let (number, coefficient) = match (coefficient, &scalar) {
                         (any, None) => (1.0, any.clone()),
@@ -206,8 +207,8 @@ impl Space {
 
 /// Matrices of a word in the kept basis, each with its own function of the
 /// control.
-fn word_matrices(local: &Local, word: &[Atom]) -> Result<Vec<(Option<Tree>, Sparse)>> {
-    let momenta = |atom: &Atom| match atom {
+fn word_matrices(local: &Local, word: &[&Atom]) -> Result<Vec<(Option<Tree>, Sparse)>> {
+    let momenta = |atom: &&Atom| match atom {
         Atom::Local(tree) if local.splits_momenta() => usize::from(
             tree.uses(&mut |node| matches!(node, Tree::Operator { operator: PartOperator::P, .. })),
         ),

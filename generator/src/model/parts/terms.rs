@@ -200,7 +200,8 @@ impl<T: Scalar> Model<T> for Terms<T> {
             {
                 spread = last.energy - first.energy;
             }
-            DEGENERATE * spread
+            // Equal levels count as degenerate even where H0 has no spread at all.
+            (DEGENERATE * spread).max(f64::MIN_POSITIVE)
         })
     }
 }

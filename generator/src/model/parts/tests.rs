@@ -497,3 +497,32 @@ fn expansion_and_change_agree_with_the_hamiltonian() {
     let mean = model.change(0.4 + d).to_dense().trace() / 4.0;
     assert!((moved - mean).abs() <= 2.0 * (rates[0] * d + rates[1] * d * d + rates[2] * d * d * d + 1e-9));
 }
+
+/// Every limit refuses before it costs time or memory.
+#[test]
+fn hostile_sizes_are_refused() {
+    let sketch = |parts: Vec<(&'static str, PartKind, Option<usize>)>, hamiltonian: &'static str| Sketch {
+        parts,
+        constants: vec![],
+        control: ("F", "1"),
+        hamiltonian,
+        conserved: vec![],
+    };
+    let interval = PartKind::Interval { from: 0.0, to: 1.0, length: false };
+    let well = sketch(vec![("w", interval, Some(5000))], "w.p^2 + F*w.x");
+    assert_eq!(code(well.build(0.0, 1, 0, &[])), "too-large");
+    let oscillator = sketch(vec![("q", PartKind::Oscillator, None)], "q.number + F*q.x");
+    assert_eq!(code(oscillator.build(0.0, 10_000, 0, &[])), "too-large");
+    let spin = sketch(vec![("S", PartKind::Spin(100_000_000), None)], "F*S.z");
+    assert_eq!(code(spin.build(0.0, 1, 0, &[])), "too-large");
+    let rotor = sketch(vec![("J", PartKind::Rotor, Some(usize::MAX))], "J.sq + F*J.cos");
+    assert_eq!(code(rotor.build(0.0, 1, 0, &[])), "too-large");
+    let product = sketch(
+        vec![("S", PartKind::Spin(1), None), ("I", PartKind::Spin(1), None)],
+        "(S.x + S.y*I.x + I.z*S.z + F*I.y)^14 + F*S.z",
+    );
+    assert_eq!(code(product.build(0.0, 1, 0, &[])), "too-large");
+    let long = format!("(S.x + {})^64 + S.z", vec!["sin(F)"; 1200].join("*"));
+    let long = sketch(vec![("S", PartKind::Spin(1), None)], Box::leak(long.into_boxed_str()));
+    assert_eq!(code(long.build(0.5, 1, 0, &[])), "built");
+}

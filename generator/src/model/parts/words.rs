@@ -24,44 +24,43 @@ pub(super) enum Atom {
     Function(Tree),
 }
 
-/// `number * coefficient(control) * word * word ...`.
+/// `number * scalar^power * ... * word * word ...`; scalars and atoms by their
+/// number in the [`Expander`]'s tables, so that large expressions are held once.
 #[derive(Clone, Debug, PartialEq)]
 pub(super) struct Product {
     pub number: f64,
-    /// The control's share; `None` for 1.
-    pub coefficient: Option<Tree>,
+    /// The control's share: scalars with their powers, ascending.
+    pub scalars: Vec<(usize, u32)>,
     /// Words by part.
-    pub words: BTreeMap<usize, Vec<Atom>>,
+    pub words: BTreeMap<usize, Vec<usize>>,
 }
 
 impl Product {
-    fn scalar(tree: Tree) -> Self {
-        let (number, coefficient) = tree.into_factor();
-        Self { number, coefficient, words: BTreeMap::new() }
-    }
-
-    fn atom(part: usize, atom: Atom) -> Self {
-        Self { number: 1.0, coefficient: None, words: BTreeMap::from([(part, vec![atom])]) }
+    fn number(number: f64) -> Self {
+        Self { number, scalars: Vec::new(), words: BTreeMap::new() }
     }
 
     fn times(&self, other: &Self) -> Self {
-        let coefficient = match (&self.coefficient, &other.coefficient) {
-            (None, any) | (any, None) => any.clone(),
-            (Some(a), Some(b)) => Some(a.clone().times(b.clone())),
-        };
+        let mut powers: BTreeMap<usize, u32> = self.scalars.iter().copied().collect();
+        for (scalar, power) in &other.scalars {
+            *powers.entry(*scalar).or_default() += power;
+        }
         let mut words = self.words.clone();
         for (part, word) in &other.words {
-            words.entry(*part).or_default().extend(word.iter().cloned());
+            words.entry(*part).or_default().extend(word);
         }
-        Self { number: self.number * other.number, coefficient, words }
+        Self { number: self.number * other.number, scalars: powers.into_iter().collect(), words }
     }
 }
+
+/// What two products share that add up.
+type Key = (Vec<(usize, u32)>, BTreeMap<usize, Vec<usize>>);
 
 /// A sum of products, like ones added up, in order of first appearance.
 #[derive(Clone, Debug, Default)]
 pub(super) struct Sum {
     pub products: Vec<Product>,
-    places: BTreeMap<String, usize>,
+    places: BTreeMap<Key, usize>,
 }
 
 impl Sum {
@@ -75,13 +74,11 @@ impl Sum {
         if product.number == 0.0 {
             return;
         }
-        let key = format!("{:?}{:?}", product.coefficient, product.words);
-        match self.places.get(&key).and_then(|&at| self.products.get_mut(at)) {
+        let next = self.products.len();
+        let place = *self.places.entry((product.scalars.clone(), product.words.clone())).or_insert(next);
+        match self.products.get_mut(place) {
             Some(like) => like.number += product.number,
-            None => {
-                self.places.insert(key, self.products.len());
-                self.products.push(product);
-            }
+            None => self.products.push(product),
         }
     }
 
@@ -95,11 +92,19 @@ impl Sum {
 }
 
 /// Multiplies out trees of one system.
+#[derive(Clone)]
 pub(super) struct Expander<'a> {
-    pub system: &'a Parts,
+    system: &'a Parts,
+    scalars: Vec<Tree>,
+    atoms: Vec<Atom>,
+    known: BTreeMap<String, usize>,
 }
 
-impl Expander<'_> {
+impl<'a> Expander<'a> {
+    pub fn new(system: &'a Parts) -> Self {
+        Self { system, scalars: Vec::new(), atoms: Vec::new(), known: BTreeMap::new() }
+    }
+
     /// The terms of the Hamiltonian as written: the operands of its outermost sums.
     pub fn written_terms(tree: &Tree) -> Vec<Tree> {
         match tree {
@@ -114,13 +119,51 @@ impl Expander<'_> {
         }
     }
 
+    /// The function of the control that these scalars make; `None` for 1.
+    pub fn coefficient(&self, scalars: &[(usize, u32)]) -> Option<Tree> {
+        scalars
+            .iter()
+            .filter_map(|(scalar, power)| {
+                Some(self.scalars.get(*scalar)?.clone().raised(Tree::Number(f64::from(*power))))
+            })
+            .reduce(Tree::times)
+    }
+
+    /// The factors of a word.
+    pub fn word(&self, word: &[usize]) -> Vec<&Atom> {
+        word.iter().filter_map(|atom| self.atoms.get(*atom)).collect()
+    }
+
+    fn scalar(&mut self, tree: &Tree) -> Product {
+        let (number, rest) = tree.clone().into_factor();
+        let mut out = Product::number(number);
+        if let Some(rest) = rest {
+            let next = self.scalars.len();
+            let place = *self.known.entry(format!("scalar {rest:?}")).or_insert(next);
+            if place == next {
+                self.scalars.push(rest);
+            }
+            out.scalars.push((place, 1));
+        }
+        out
+    }
+
+    fn atom(&mut self, part: usize, atom: Atom) -> Product {
+        let next = self.atoms.len();
+        let place = *self.known.entry(format!("atom {atom:?}")).or_insert(next);
+        if place == next {
+            self.atoms.push(atom);
+        }
+        Product { words: BTreeMap::from([(part, vec![place])]), ..Product::number(1.0) }
+    }
+
     /// Multiplies a tree out.
     ///
     /// # Errors
     /// If there are more products than the program takes.
-    pub fn expand(&self, tree: &Tree) -> Result<Sum> {
+    pub fn expand(&mut self, tree: &Tree) -> Result<Sum> {
         if !tree.uses_operator() {
-            return Ok(Sum::one(Product::scalar(tree.clone())));
+            return Ok(Sum::one(self.scalar(tree)));
         }
         let parts = tree.parts();
         if let [part] = parts.as_slice()
@@ -129,44 +172,46 @@ impl Expander<'_> {
         {
             let (number, rest) = tree.clone().into_factor();
             return Ok(Sum::one(match rest {
-                None => Product::scalar(Tree::Number(number)),
-                Some(rest) => Product { number, ..Product::atom(*part, Atom::Local(rest)) },
+                None => Product::number(number),
+                Some(rest) => Product { number, ..self.atom(*part, Atom::Local(rest)) },
             }));
         }
         match tree {
-            Tree::Operator { part, .. } => Ok(Sum::one(Product::atom(*part, Atom::Local(tree.clone())))),
+            Tree::Operator { part, .. } => Ok(Sum::one(self.atom(*part, Atom::Local(tree.clone())))),
             Tree::Dot(a, b) => {
                 let mut out = Sum::default();
                 for operator in [PartOperator::X, PartOperator::Y, PartOperator::Z] {
-                    let of =
-                        |part: usize| Product::atom(part, Atom::Local(Tree::Operator { part, operator }));
-                    out.add(of(*a).times(&of(*b)));
+                    let left = self.atom(*a, Atom::Local(Tree::Operator { part: *a, operator }));
+                    let right = self.atom(*b, Atom::Local(Tree::Operator { part: *b, operator }));
+                    out.add(left.times(&right));
                 }
                 Ok(out)
             }
             Tree::Negative(inner) => Ok(Sum::default().plus(self.expand(inner)?, -1.0)),
             Tree::Add(a, b) => Ok(self.expand(a)?.plus(self.expand(b)?, 1.0)),
             Tree::Subtract(a, b) => Ok(self.expand(a)?.plus(self.expand(b)?, -1.0)),
-            Tree::Multiply(a, b) => self.multiplied(&self.expand(a)?, &self.expand(b)?),
+            Tree::Multiply(a, b) => {
+                let (a, b) = (self.expand(a)?, self.expand(b)?);
+                self.multiplied(&a, &b)
+            }
             Tree::Divide(a, b) => {
-                let inverse = Sum::one(Product::scalar(Tree::Number(1.0).over((**b).clone())));
-                self.multiplied(&self.expand(a)?, &inverse)
+                let inverse = Sum::one(self.scalar(&Tree::Number(1.0).over((**b).clone())));
+                let above = self.expand(a)?;
+                self.multiplied(&above, &inverse)
             }
             Tree::Power(base, exponent) => {
                 let base = self.expand(base)?;
-                let mut out = Sum::one(Product::scalar(Tree::Number(1.0)));
+                let mut out = Sum::one(Product::number(1.0));
                 for _ in 0..exponent.as_number().unwrap_or(0.0) as usize {
                     out = self.multiplied(&out, &base)?;
                 }
                 Ok(out)
             }
             Tree::Call(..) => match parts.first() {
-                Some(part) => {
-                    Ok(Sum::one(Product::atom(*part, Atom::Function(tree.coordinate_as_position()))))
-                }
+                Some(part) => Ok(Sum::one(self.atom(*part, Atom::Function(tree.coordinate_as_position())))),
                 None => Err(Error::internal("a function of operators without a part")),
             },
-            Tree::Number(_) | Tree::Control | Tree::Position => Ok(Sum::one(Product::scalar(tree.clone()))),
+            Tree::Number(_) | Tree::Control | Tree::Position => Ok(Sum::one(self.scalar(tree))),
         }
     }
 
@@ -199,7 +244,7 @@ impl Expander<'_> {
 }
 
 /// How many steps of a part's basis a word can go.
-pub(super) fn reach(word: &[Atom]) -> usize {
+pub(super) fn reach(word: &[&Atom]) -> usize {
     word.iter()
         .map(|atom| match atom {
             Atom::Local(tree) => tree_reach(tree),
@@ -226,7 +271,7 @@ fn tree_reach(tree: &Tree) -> usize {
 }
 
 /// True if a word takes a function of the coordinate.
-pub(super) fn has_function(word: &[Atom]) -> bool {
+pub(super) fn has_function(word: &[&Atom]) -> bool {
     word.iter().any(|atom| match atom {
         Atom::Local(tree) => tree.uses(&mut |node| matches!(node, Tree::Call(..)) && node.uses_operator()),
         Atom::Function(_) => true,

@@ -1,6 +1,7 @@
 //! Operators as sums of products whose sign under a transformation is a sum of
 //! bits modulo 2.
 
+use std::cell::Cell;
 use std::collections::BTreeMap;
 
 use crate::expr::{Function, PartOperator, Tree};
@@ -9,7 +10,11 @@ use crate::spec::{PartKind, Parts};
 use crate::units::decimal;
 
 /// Most products before the search gives up.
-const MOST_PRODUCTS: usize = 3000;
+const MOST_PRODUCTS: usize = 1000;
+
+/// Products formed in all before the search gives up, so that a huge Hamiltonian
+/// costs no more than a fraction of a second.
+const MOST_WORK: usize = 300_000;
 
 /// Highest power that is multiplied out.
 const HIGHEST_POWER: f64 = 16.0;
@@ -68,6 +73,7 @@ pub(super) struct Search<'a> {
     pub centres: Vec<f64>,
     pub equations: Vec<Form>,
     names: BTreeMap<String, u32>,
+    work: Cell<usize>,
 }
 
 /// Codes of elementary operators in words.
@@ -125,6 +131,7 @@ impl<'a> Search<'a> {
             centres,
             equations: Vec::new(),
             names: BTreeMap::new(),
+            work: Cell::new(0),
         }
     }
 
@@ -155,6 +162,10 @@ impl<'a> Search<'a> {
     }
 
     fn sum(&self, mut a: Polynomial, b: Polynomial, factor: f64) -> Option<Polynomial> {
+        self.work.set(self.work.get().saturating_add(b.len()));
+        if self.work.get() > MOST_WORK {
+            return None;
+        }
         for (key, (value, form)) in b {
             let entry = a.entry(key).or_insert((C64::new(0.0, 0.0), form));
             entry.0 += times(value, C64::new(factor, 0.0));
@@ -164,7 +175,9 @@ impl<'a> Search<'a> {
     }
 
     fn product(&self, a: &Polynomial, b: &Polynomial) -> Option<Polynomial> {
-        if a.len().saturating_mul(b.len()) > 4 * MOST_PRODUCTS {
+        let work = self.work.get().saturating_add(a.len().saturating_mul(b.len()));
+        self.work.set(work);
+        if work > MOST_WORK {
             return None;
         }
         let mut out = Polynomial::new();
