@@ -17,6 +17,7 @@
 mod block;
 mod gauss;
 mod local;
+mod order;
 mod real;
 mod size;
 mod space;
@@ -210,7 +211,7 @@ impl<'a> Problem<'a> {
                 states.get(state).map_or(String::new(), |&state| space.describe(state, &names))
             })?;
         }
-        let groups = match self.rotated(&conserved, groups, &states, total)? {
+        let mut groups = match self.rotated(&conserved, groups, &states, total)? {
             Ok(groups) => groups,
             Err(error) => return Ok(Attempt::NoSuchValue(error)),
         };
@@ -218,6 +219,7 @@ impl<'a> Problem<'a> {
         if order == 0 {
             return Err(Error::internal("a block without states"));
         }
+        order::narrow(&mut groups);
         Ok(Attempt::Built(Box::new(self.built(&conserved, groups, order, total, refinement)?)))
     }
 
