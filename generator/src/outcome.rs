@@ -128,6 +128,45 @@ pub struct FormulaOutcome {
     pub samples: Vec<Sample>,
     /// Remarks.
     pub notes: Vec<Note>,
+    /// Coefficients over the family's box, if constants became arguments.
+    pub family: Option<FamilyOutcome>,
+}
+
+/// Coefficients of one formula over the family's box.
+#[derive(Clone, Debug, PartialEq)]
+pub struct FamilyOutcome {
+    /// Per power of d, the degree in each parameter.
+    pub degree: Vec<Vec<usize>>,
+    /// Nested per power of d, Chebyshev order, first parameter outermost.
+    pub coefficients: serde_json::Value,
+    /// Samples over box and range.
+    pub samples: Vec<FamilySample>,
+}
+
+/// One exact value inside the family's box beside the formula's.
+#[derive(Clone, Debug, PartialEq)]
+pub struct FamilySample {
+    /// Parameters in the order of the spec, in their units.
+    pub parameters: Vec<f64>,
+    /// Control value.
+    pub control: f64,
+    /// Exact quantity (its change, with `shift`).
+    pub exact: f64,
+    /// The formula's value.
+    pub formula: f64,
+}
+
+/// A constant that became an argument.
+#[derive(Clone, Debug, PartialEq)]
+pub struct FamilyParameterOutcome {
+    /// Constant's name.
+    pub name: String,
+    /// Unit of the argument.
+    pub unit: String,
+    /// Lower end, in `unit`.
+    pub from: f64,
+    /// Upper end, in `unit`.
+    pub to: f64,
 }
 
 /// A formula inside one output file.
@@ -173,6 +212,8 @@ pub struct Outcome {
     pub inputs: Vec<Input>,
     /// The control.
     pub control: ControlOutcome,
+    /// Constants that became arguments, in the order of the spec.
+    pub family: Vec<FamilyParameterOutcome>,
     /// The formulas in the order of the spec.
     pub formulas: Vec<FormulaOutcome>,
     /// The written files, empty until they were emitted.

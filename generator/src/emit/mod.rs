@@ -2,6 +2,8 @@
 //!
 //! Not here: physics.
 
+pub mod record;
+
 /// A finished file, not yet written.
 #[derive(Clone, Debug, PartialEq, Eq)]
 pub struct Source {

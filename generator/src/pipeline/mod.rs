@@ -17,7 +17,7 @@ pub use sum::{LevelTerm, Sum};
 
 use crate::diagnostic::Result;
 use crate::emit::{self, Source};
-use crate::outcome::{ControlOutcome, Outcome};
+use crate::outcome::{ControlOutcome, FamilyParameterOutcome, Outcome};
 use crate::spec::{Formula, LevelRef, Spec, Target, TermKind};
 
 /// A finished run.
@@ -62,6 +62,16 @@ pub fn solve(spec: &Spec) -> Result<Outcome> {
             at: spec.control.at,
             within: spec.control.within,
         },
+        family: spec
+            .family
+            .iter()
+            .map(|parameter| FamilyParameterOutcome {
+                name: parameter.name.clone(),
+                unit: parameter.unit.symbol.clone(),
+                from: parameter.from,
+                to: parameter.to,
+            })
+            .collect(),
         formulas,
         outputs: Vec::new(),
         warnings: spec.warnings.clone(),

@@ -1,1 +1,9 @@
-//! Check, compare, explain, report.
+//! Check, compare, explain, report: what people ask about a finished run.
+//!
+//! In: outcomes, records and the texts of generated files. Out: text, or plain
+//! data that the command line prints as JSON.
+//!
+//! Not here: files on disk, the terminal, solving.
+
+#[cfg(test)]
+pub(crate) mod example;
