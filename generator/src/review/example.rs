@@ -3,8 +3,8 @@
 
 use crate::form::Form;
 use crate::outcome::{
-    ContributionOutcome, ControlOutcome, DigestedFile, FormulaOutcome, Input, MixingOutcome, Note,
-    Outcome, OutputFormula, OutputOutcome, Valid, ValueKind,
+    ContributionOutcome, ControlOutcome, DigestedFile, FormulaOutcome, Input, MixingOutcome, Note, Outcome,
+    OutputFormula, OutputOutcome, Valid, ValueKind,
 };
 use crate::range::Sample;
 
@@ -18,9 +18,7 @@ pub(crate) fn outcome() -> Outcome {
         name: "onset".to_owned(),
         unit: "meV".to_owned(),
         value: ValueKind::Absolute,
-        form: Form::Polynomial {
-            coefficients: vec![1_458.934_408_104_531, 0.0, -0.000_545_911_140_116_1],
-        },
+        form: Form::Polynomial { coefficients: vec![1_458.934_408_104_531, 0.0, -0.000_545_911_140_116_1] },
         series: [1_458.934_408_104_531, 0.0, -0.000_545_911_140_116_1, 0.0, 9.580_690_3e-10],
         uncertainty: [1e-10, 0.0, 1e-14, 0.0, 1e-15],
         zero_by_symmetry: vec![1, 3],
@@ -35,18 +33,9 @@ pub(crate) fn outcome() -> Outcome {
                 energy: 135.91,
                 share: 0.9993,
             },
-            ContributionOutcome {
-                system: "electron".to_owned(),
-                level: None,
-                energy: 34.934,
-                share: 0.0007,
-            },
+            ContributionOutcome { system: "electron".to_owned(), level: None, energy: 34.934, share: 0.0007 },
         ],
-        mixing: vec![MixingOutcome {
-            system: "electron".to_owned(),
-            level: 2,
-            coefficient: 0.002_32,
-        }],
+        mixing: vec![MixingOutcome { system: "electron".to_owned(), level: 2, coefficient: 0.002_32 }],
         levels: vec![("electron".to_owned(), vec![34.934, 135.91])],
         sizes: vec![("electron".to_owned(), 47)],
         samples: (-4..=4)
@@ -57,10 +46,7 @@ pub(crate) fn outcome() -> Outcome {
                 Sample { control, exact, formula }
             })
             .collect(),
-        notes: vec![Note {
-            code: "even".to_owned(),
-            text: "the stack is its own mirror image".to_owned(),
-        }],
+        notes: vec![Note { code: "even".to_owned(), text: "the stack is its own mirror image".to_owned() }],
         family: None,
     };
     let line = FormulaOutcome {
@@ -79,11 +65,8 @@ pub(crate) fn outcome() -> Outcome {
         notes: Vec::new(),
         ..onset.clone()
     };
-    let input = |path: &str, value: f64, unit: &str| Input {
-        path: path.to_owned(),
-        value,
-        unit: unit.to_owned(),
-    };
+    let input =
+        |path: &str, value: f64, unit: &str| Input { path: path.to_owned(), value, unit: unit.to_owned() };
     Outcome {
         name: "shutter".to_owned(),
         summary: "Absorption onset of the shutter well against its drive field".to_owned(),

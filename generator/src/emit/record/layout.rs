@@ -85,7 +85,11 @@ mod tests {
     fn short_lists_stay_on_one_line_and_long_ones_break() {
         let long: Vec<f64> = (0..40).map(|k| f64::from(k) / 7.0).collect();
         let text = lay_out(&json!({"a": [1.0, 2.5e-9], "b": {"c": null}, "long": long}));
-        assert!(text.starts_with("{\n  \"a\": [1.0, 2.5e-9],\n  \"b\": {\"c\": null},\n  \"long\": [\n    0.0,\n"));
+        assert!(
+            text.starts_with(
+                "{\n  \"a\": [1.0, 2.5e-9],\n  \"b\": {\"c\": null},\n  \"long\": [\n    0.0,\n"
+            )
+        );
         assert!(text.ends_with("\n  ]\n}"));
         assert!(text.lines().all(|line| line.chars().count() <= WIDTH));
         assert_eq!(serde_json::from_str::<Value>(&text).expect("JSON")["long"][39], 39.0 / 7.0);

@@ -17,15 +17,14 @@ use sha2::{Digest, Sha256};
 
 use crate::diagnostic::{Diagnostic, Error, Place, Result};
 use crate::outcome::{
-    ContributionOutcome, ControlOutcome, DigestedFile, FamilyOutcome, FamilyParameterOutcome,
-    FamilySample, FormulaOutcome, Input, MixingOutcome, Note, Outcome, OutputFormula,
-    OutputOutcome, Valid, ValueKind,
+    ContributionOutcome, ControlOutcome, DigestedFile, FamilyOutcome, FamilyParameterOutcome, FamilySample,
+    FormulaOutcome, Input, MixingOutcome, Note, Outcome, OutputFormula, OutputOutcome, Valid, ValueKind,
 };
 use crate::range::Sample;
 use entries::{
-    Coefficients, Contribution, Control, ErrorBudget, Family, FamilyFormula, FirstToFail, Formula,
-    Generator, LevelNumber, Mixing, Named, Ordered, Output, OutputEntryFormula, Paired, Parameter,
-    ParameterSample, Quantity, Range, RecordFile, Remark, SampleEntry, SpecEntry,
+    Coefficients, Contribution, Control, ErrorBudget, Family, FamilyFormula, FirstToFail, Formula, Generator,
+    LevelNumber, Mixing, Named, Ordered, Output, OutputEntryFormula, Paired, Parameter, ParameterSample,
+    Quantity, Range, RecordFile, Remark, SampleEntry, SpecEntry,
 };
 
 /// Version of the record's layout that this program writes.
@@ -103,8 +102,7 @@ fn cause(error: &serde_json::Error) -> String {
 
 /// Byte offset of a line and a column counted in bytes, both from 1.
 fn byte_of(text: &str, line: usize, column: usize) -> usize {
-    let start: usize =
-        text.split_inclusive('\n').take(line.saturating_sub(1)).map(str::len).sum();
+    let start: usize = text.split_inclusive('\n').take(line.saturating_sub(1)).map(str::len).sum();
     let mut byte = (start + column.saturating_sub(1)).min(text.len());
     while !text.is_char_boundary(byte) {
         byte -= 1;
@@ -163,17 +161,10 @@ fn from_outcome(outcome: &Outcome) -> RecordFile {
             parameters: outcome
                 .family
                 .iter()
-                .map(|p| Parameter {
-                    name: p.name.clone(),
-                    unit: p.unit.clone(),
-                    from: p.from,
-                    to: p.to,
-                })
+                .map(|p| Parameter { name: p.name.clone(), unit: p.unit.clone(), from: p.from, to: p.to })
                 .collect(),
         }),
-        formulas: Ordered(
-            outcome.formulas.iter().map(|f| (f.name.clone(), from_formula(f))).collect(),
-        ),
+        formulas: Ordered(outcome.formulas.iter().map(|f| (f.name.clone(), from_formula(f))).collect()),
         outputs: outcome.outputs.iter().map(from_output).collect(),
         warnings: outcome.warnings.iter().map(remark).collect(),
     }
@@ -191,9 +182,7 @@ fn from_formula(formula: &FormulaOutcome) -> Formula {
             ValueKind::Shift => "shift".to_owned(),
         },
         coefficients: match &formula.form {
-            crate::form::Form::Polynomial { coefficients } => {
-                Coefficients::Polynomial(coefficients.clone())
-            }
+            crate::form::Form::Polynomial { coefficients } => Coefficients::Polynomial(coefficients.clone()),
             crate::form::Form::Paired { mean, half_gap_squared, sign, partner } => {
                 Coefficients::Paired(Paired {
                     mean: mean.clone(),
@@ -213,10 +202,7 @@ fn from_formula(formula: &FormulaOutcome) -> Formula {
             numerical: formula.error[1],
             written_digits: formula.error[2],
         },
-        first_to_fail: FirstToFail {
-            below: formula.first_to_fail[0],
-            above: formula.first_to_fail[1],
-        },
+        first_to_fail: FirstToFail { below: formula.first_to_fail[0], above: formula.first_to_fail[1] },
         contributions: formula
             .contributions
             .iter()
@@ -230,11 +216,7 @@ fn from_formula(formula: &FormulaOutcome) -> Formula {
         mixing: formula
             .mixing
             .iter()
-            .map(|m| Mixing {
-                system: m.system.clone(),
-                level: m.level,
-                coefficient: m.coefficient,
-            })
+            .map(|m| Mixing { system: m.system.clone(), level: m.level, coefficient: m.coefficient })
             .collect(),
         levels: Ordered(formula.levels.clone()),
         sizes: Ordered(formula.sizes.clone()),
@@ -326,9 +308,7 @@ fn to_formula(name: String, formula: Formula) -> FormulaOutcome {
         unit: formula.unit,
         value: if formula.value == "shift" { ValueKind::Shift } else { ValueKind::Absolute },
         form: match formula.coefficients {
-            Coefficients::Polynomial(coefficients) => {
-                crate::form::Form::Polynomial { coefficients }
-            }
+            Coefficients::Polynomial(coefficients) => crate::form::Form::Polynomial { coefficients },
             Coefficients::Paired(pair) => crate::form::Form::Paired {
                 mean: pair.mean,
                 half_gap_squared: pair.half_gap_squared,
@@ -356,11 +336,7 @@ fn to_formula(name: String, formula: Formula) -> FormulaOutcome {
         mixing: formula
             .mixing
             .into_iter()
-            .map(|m| MixingOutcome {
-                system: m.system,
-                level: m.level,
-                coefficient: m.coefficient,
-            })
+            .map(|m| MixingOutcome { system: m.system, level: m.level, coefficient: m.coefficient })
             .collect(),
         levels: formula.levels.0,
         sizes: formula.sizes.0,
@@ -427,10 +403,7 @@ mod tests {
         let keys: Vec<&str> = value.as_object().expect("object").keys().map(String::as_str).collect();
         assert_eq!(
             keys,
-            [
-                "record", "generator", "spec", "sources", "inputs", "control", "family", "formulas",
-                "outputs"
-            ]
+            ["record", "generator", "spec", "sources", "inputs", "control", "family", "formulas", "outputs"]
         );
         assert!(value["family"].is_null());
         let formula = &value["formulas"]["onset"];
@@ -439,7 +412,12 @@ mod tests {
         assert_eq!(formula["error"]["written_digits"], 7e-13);
         assert_eq!(value["formulas"]["line"]["coefficients"]["sign"], -1);
         assert_eq!(value["outputs"][0]["formulas"]["onset"]["rounding"], 4e-13);
-        assert!(text.contains(r#""control": {"symbol": "F", "unit": "kV/cm", "at": 0.0, "within": [-60.0, 60.0]}"#), "{text}");
+        assert!(
+            text.contains(
+                r#""control": {"symbol": "F", "unit": "kV/cm", "at": 0.0, "within": [-60.0, 60.0]}"#
+            ),
+            "{text}"
+        );
     }
 
     #[test]
@@ -483,9 +461,6 @@ mod tests {
     /// Source: FIPS 180-4's example message "abc".
     #[test]
     fn the_digest_is_sha_256() {
-        assert_eq!(
-            digest(b"abc"),
-            "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad"
-        );
+        assert_eq!(digest(b"abc"), "ba7816bf8f01cfea414140de5dae2223b00361a396177a9cb410ff61f20015ad");
     }
 }
