@@ -51,11 +51,24 @@ impl Sketch {
         Place { file: "sketch".into(), start: 0, end: 0 }
     }
 
-    pub fn system(&self) -> System {
+    fn names(&self) -> Names<'_> {
         let mut names = Names(self, BTreeMap::new());
         for (name, text) in &self.constants {
             names.1.insert(name, crate::units::Quantity::parse(text).unwrap().value());
         }
+        names
+    }
+
+    /// True if the language takes all texts, the Hamiltonian being of some kind.
+    fn resolves(&self) -> bool {
+        let names = self.names();
+        let resolved = |text: &str| Expression::parse(text).ok()?.resolve(&names).ok();
+        resolved(self.hamiltonian).is_some_and(|one| one.dimension.and_then(EnergyKind::of).is_some())
+            && self.conserved.iter().all(|(_, text)| resolved(text).is_some())
+    }
+
+    pub fn system(&self) -> System {
+        let names = self.names();
         let resolve = |text: &str| Expression::parse(text).unwrap().resolve(&names).unwrap();
         let hamiltonian = resolve(self.hamiltonian);
         let unit = EnergyKind::of(hamiltonian.dimension.unwrap()).unwrap().coherent_unit();
@@ -525,4 +538,98 @@ fn hostile_sizes_are_refused() {
     let long = format!("(S.x + {})^64 + S.z", vec!["sin(F)"; 1200].join("*"));
     let long = sketch(vec![("S", PartKind::Spin(1), None)], Box::leak(long.into_boxed_str()));
     assert_eq!(code(long.build(0.5, 1, 0, &[])), "built");
+}
+
+mod hostile {
+    use super::*;
+    use proptest::prelude::*;
+
+    const PARTS: [(&str, PartKind, Option<usize>); 7] = [
+        ("S", PartKind::Spin(1), None),
+        ("I", PartKind::Spin(2), None),
+        ("R", PartKind::Rotor, Some(2)),
+        ("q", PartKind::Oscillator, Some(3)),
+        ("p", PartKind::Phase, Some(3)),
+        ("w", PartKind::Interval { from: -1.0, to: 2.0, length: false }, Some(3)),
+        ("s", PartKind::States(3), None),
+    ];
+
+    /// Any expression of the language, sensible or not.
+    fn expressions() -> impl Strategy<Value = String> {
+        let leaf = prop::sample::select(vec![
+            "S.x",
+            "S.y",
+            "S.raise",
+            "I.z",
+            "dot(S, I)",
+            "dot(I, I)",
+            "R.cos",
+            "R.cos2",
+            "R.sq",
+            "q.x",
+            "q.p",
+            "q.raise",
+            "p.number",
+            "p.sin",
+            "p.cos",
+            "w.x",
+            "w.p",
+            "s.jump(1, 2)",
+            "s.couple(2, 3)",
+            "d",
+            "2",
+            "0",
+            "0.3",
+            "sqrt(d)",
+            "ln(q.x)",
+            "exp(d*w.x)",
+            "abs(q.x - d)",
+            "1/(d - 0.5)",
+        ])
+        .prop_map(str::to_owned);
+        leaf.prop_recursive(4, 24, 2, |inner| {
+            prop_oneof![
+                (inner.clone(), "[-+*]", inner.clone()).prop_map(|(a, op, b)| format!("({a}){op}({b})")),
+                (inner.clone(), 0u32..4).prop_map(|(a, n)| format!("({a})^{n}")),
+                inner.clone().prop_map(|a| format!("({a})/(1 + d^2)")),
+                // A sum that is often Hermitian, so that later steps are reached.
+                (inner.clone(), inner).prop_map(|(a, b)| format!("({a})*({b}) + ({b})*({a})")),
+            ]
+        })
+    }
+
+    proptest! {
+        #![proptest_config(ProptestConfig::with_cases(300))]
+
+        #[test]
+        fn any_hamiltonian_is_built_or_refused(
+            hamiltonian in expressions(),
+            conserved in expressions(),
+            value in prop::sample::select(vec![None, Some(0.0), Some(0.5), Some(2.0)]),
+            at in prop::sample::select(vec![0.0, 0.5, -1.5]),
+        ) {
+            let used: Vec<_> = PARTS
+                .into_iter()
+                .filter(|(name, ..)| {
+                    let text = format!("{hamiltonian} {conserved}");
+                    text.contains(&format!("{name}.")) || (text.contains("dot") && "SI".contains(name))
+                })
+                .collect();
+            let conserved: &'static str = Box::leak(conserved.into_boxed_str());
+            let sketch = Sketch {
+                parts: used,
+                constants: vec![],
+                control: ("d", "1"),
+                hamiltonian: Box::leak(hamiltonian.clone().into_boxed_str()),
+                conserved: if value.is_some() { vec![("c", conserved)] } else { vec![] },
+            };
+            // What the language itself refuses (a division by zero, say) is no case.
+            prop_assume!(sketch.resolves());
+            let block: Vec<(&str, f64)> = value.iter().map(|value| ("c", *value)).collect();
+            if let Ok(built) = sketch.build(at, 1, 0, &block) {
+                prop_assert_eq!(levels(&built, at).len(), built.size);
+                prop_assert!(levels(&built, at).iter().all(|level| level.is_finite()));
+            }
+        }
+    }
 }
