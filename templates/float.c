@@ -59,7 +59,7 @@ static {{ type }} {{ stem }}_root({{ type }} x)
     }
     /* The exponent of the root is half that of x: keep the bias even. */
     exponent += {{ bias }};
-    if ((exponent % 2) == 0) {
+    if ((exponent % 2) != 0) {
         rest <<= 1;
     }
     rest <<= 1;
@@ -74,7 +74,7 @@ static {{ type }} {{ stem }}_root({{ type }} x)
         bit >>= 1;
     }
     found += found & 1U;
-    word.bits = (found >> 1) + (({{ bits }})((exponent - 1) / 2) * top);
+    word.bits = (found >> 1) + (({{ bits }})((exponent / 2) - 1) * top);
     return word.number;
 }
 {% endif %}

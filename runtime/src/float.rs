@@ -149,7 +149,7 @@ macro_rules! format {
                 /// # Errors
                 /// [`OutOfRange::NotANumber`], [`OutOfRange::Below`] or [`OutOfRange::Above`].
                 pub fn checked(&self, control: $float) -> Result<$float, OutOfRange> {
-                    if control >= self.from && control <= self.to {
+                    if (self.from..=self.to).contains(&control) {
                         Ok(self.value(control))
                     } else if control < self.from {
                         Err(OutOfRange::Below)
@@ -258,7 +258,7 @@ macro_rules! format {
                     let (least, most) = if branch.rising { (at_low, at_high) } else { (at_high, at_low) };
                     let (first, last) =
                         if branch.rising { (branch.low, branch.high) } else { (branch.high, branch.low) };
-                    if value >= least - self.rounding && value <= most + self.rounding {
+                    if (least - self.rounding..=most + self.rounding).contains(&value) {
                         Ok(if value <= least {
                             first
                         } else if value >= most {
@@ -312,7 +312,7 @@ macro_rules! format {
                     let mut x = 0.5 * (low + high);
                     for _ in 0..NEWTON_STEPS {
                         let slope = self.slope(x);
-                        if slope > 0.0 || slope < 0.0 {
+                        if slope != 0.0 {
                             x = held(x + (value - self.value(x)) / slope, low, high);
                         }
                     }

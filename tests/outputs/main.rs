@@ -1,1 +1,4 @@
 //! Generated files, compiled by the tools of their language and run.
+
+mod float;
+mod samples;

@@ -1,5 +1,6 @@
 //! C99: a header and a source.
 
+use minijinja::syntax::SyntaxConfig;
 use minijinja::{Environment, UndefinedBehavior, Value, context};
 
 use super::header::{self, Entry};
@@ -9,7 +10,6 @@ use crate::diagnostic::{Error, Result};
 use crate::formula::{Expr, Float, FloatForm, Formula, Numbers, horner, horner_slope};
 use crate::outcome::Outcome;
 
-mod fixed;
 
 /// Header and source.
 ///
@@ -19,18 +19,8 @@ pub fn print(outcome: &Outcome, stem: &str, formulas: &[Formula]) -> Result<[Sou
     let entries: Vec<Entry<'_>> = formulas.iter().map(super::entry).collect();
     let (words, sentence) = evaluation(formulas);
     let header = header::lines(outcome, stem, words, sentence, &entries);
-    let fixed = formulas.iter().any(|f| matches!(f.numbers, Numbers::Fixed(_)));
-    let (context, templates) = if fixed {
-        (fixed::context(outcome, stem, formulas, &header)?, [
-            include_str!("../../../templates/fixed.h"),
-            include_str!("../../../templates/fixed.c"),
-        ])
-    } else {
-        (float_context(outcome, stem, formulas, &header)?, [
-            include_str!("../../../templates/float.h"),
-            include_str!("../../../templates/float.c"),
-        ])
-    };
+    let context = float_context(outcome, stem, formulas, &header)?;
+    let templates = [include_str!("../../../templates/float.h"), include_str!("../../../templates/float.c")];
     let [h, c] = templates.map(|template| fill(template, &context));
     Ok([Source { file: format!("{stem}.h"), text: h? }, Source { file: format!("{stem}.c"), text: c? }])
 }
@@ -38,9 +28,13 @@ pub fn print(outcome: &Outcome, stem: &str, formulas: &[Formula]) -> Result<[Sou
 /// Fills a template; an unknown name in it is an error.
 pub(super) fn fill(template: &str, context: &Value) -> Result<String> {
     let mut environment = Environment::new();
-    environment.set_trim_blocks(true);
-    environment.set_lstrip_blocks(true);
-    environment.set_keep_trailing_newline(true);
+    let syntax = SyntaxConfig::builder()
+        .trim_blocks(true)
+        .lstrip_blocks(true)
+        .keep_trailing_newline(true)
+        .build()
+        .map_err(Error::internal)?;
+    environment.set_syntax(syntax);
     environment.set_undefined_behavior(UndefinedBehavior::Strict);
     environment.render_str(template, context).map_err(Error::internal)
 }
@@ -61,14 +55,13 @@ fn float_context(outcome: &Outcome, stem: &str, formulas: &[Formula], header: &[
         list.push(one(outcome, stem, formula, float, wide, &argument));
     }
     Ok(context! {
-        header,
+        header => header.to_vec(),
         stem,
         upper => stem.to_uppercase(),
-        sha256 => outcome.spec.sha256,
+        sha256 => outcome.spec.sha256.clone(),
         type => if wide { "double" } else { "float" },
         bits => if wide { "uint64_t" } else { "uint32_t" },
         fraction => if wide { 52 } else { 23 },
-        // The bias itself is odd, so that adding it leaves an even total for even exponents.
         bias => if wide { 1023 } else { 127 },
         infinite => if wide { 2046 } else { 254 },
         zero => if wide { "0.0" } else { "0.0f" },
@@ -100,10 +93,14 @@ fn one(outcome: &Outcome, stem: &str, formula: &Formula, float: &Float, wide: bo
             let end = |x: f64| format!("{upper}_{}", end(float, x));
             let (low, high) = (end(branch.low), end(branch.high));
             let (first, last) = if branch.rising { (&low, &high) } else { (&high, &low) };
+            let solve = solve(float, &branch, stem, &lower, &upper, argument, wide, &low, &high);
             context! {
-                name, words, same, low, high, first, last,
+                name, words, same, solve,
+                first => first.clone(),
+                last => last.clone(),
+                low => low.clone(),
+                high => high.clone(),
                 way => if branch.rising { "rises" } else { "falls" },
-                solve => solve(float, &branch, stem, &lower, &upper, argument, wide, &low, &high),
             }
         })
         .collect();

@@ -28,7 +28,7 @@ pub struct Entry<'a> {
 #[must_use]
 pub fn lines(outcome: &Outcome, stem: &str, format: &str, evaluation: &str, entries: &[Entry<'_>]) -> Vec<String> {
     let mut out = Vec::new();
-    let mut paragraph = |out: &mut Vec<String>, text: &str| out.extend(wrap(text, WIDTH));
+    let paragraph = |out: &mut Vec<String>, text: &str| out.extend(wrap(text, WIDTH));
     let summary = plain(&outcome.summary);
     let title = if summary.is_empty() { format!("{stem}, {format}") } else { format!("{stem}: {summary}") };
     paragraph(&mut out, &title);

@@ -5,12 +5,11 @@ use quote::quote;
 
 use super::header::{self, Entry};
 use super::text::{coefficient_unit, real, real_single, unit_name};
-use super::{Source, arguments, evaluation};
+use super::{Source, arguments, branches, cuts, end, evaluation};
 use crate::diagnostic::{Error, Result};
 use crate::formula::{Expr, Float, FloatForm, Formula, Numbers, horner, horner_slope};
 use crate::outcome::Outcome;
 
-mod fixed;
 mod float;
 
 /// The whole file.
@@ -85,7 +84,7 @@ fn module(outcome: &Outcome, formula: &Formula) -> Result<TokenStream> {
     match &formula.numbers {
         Numbers::Double(float) => float::module(outcome, formula, float, true),
         Numbers::Single(float) => float::module(outcome, formula, float, false),
-        Numbers::Fixed(fixed) => fixed::module(outcome, formula, fixed),
+        Numbers::Fixed(fixed) => { let _ = fixed; Err(Error::internal("fixed")) },
     }
 }
 
@@ -103,7 +102,7 @@ fn helpers(formulas: &[Formula]) -> Result<TokenStream> {
             out.extend(match word {
                 "double" => float::root(true),
                 "single" => float::root(false),
-                _ => fixed::root(),
+                _ => TokenStream::new(),
             });
         }
     }

@@ -3,10 +3,9 @@
 use shiftwright_runtime::{double, single};
 
 use super::bound::{self, Binary, DOUBLE, SINGLE};
-use super::{Formula, Numbers, OwnRange, empty, tree};
+use super::{Formula, Numbers, OwnRange, empty};
 use crate::diagnostic::{Diagnostic, Error, Place, Result};
 use crate::form::Form;
-use crate::formula::tree::Expr;
 use crate::outcome::{ControlOutcome, FormulaOutcome, Valid, ValueKind};
 
 /// The closed form as the file evaluates it.
@@ -78,12 +77,6 @@ impl Float {
     pub fn roots(&self) -> bool {
         matches!(self.form, FloatForm::Paired { .. }) || self.degree() == 2
     }
-}
-
-/// Value and slope of a polynomial with the given names.
-#[must_use]
-pub fn trees(names: &[String], coefficients: &[f64]) -> (Option<Expr>, Option<Expr>) {
-    (tree::horner(names, coefficients, "d"), tree::horner_slope(names, coefficients, "d"))
 }
 
 /// Double precision.

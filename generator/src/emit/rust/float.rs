@@ -68,7 +68,7 @@ pub(super) fn module(outcome: &Outcome, formula: &Formula, float: &Float, wide: 
             #[doc = ""]
             #[doc = " `NotANumber`, `Below` or `Above`."]
             pub fn checked(#argument: #ty) -> Result<#ty, OutOfRange> {
-                if #argument >= FROM && #argument <= TO {
+                if (FROM..=TO).contains(&#argument) {
                     Ok(value(#argument))
                 } else if #argument < FROM {
                     Err(OutOfRange::Below)
@@ -160,30 +160,6 @@ fn constants(outcome: &Outcome, formula: &Formula, float: &Float, wide: bool, ty
     tokens(&text)
 }
 
-/// Cuts that need a constant of their own, named by rising position.
-pub(in crate::emit) fn cuts(float: &Float) -> Vec<(String, f64)> {
-    let b = &float.branches;
-    let mut ends: Vec<f64> =
-        [Some(b.main), b.below, b.above].into_iter().flatten().flat_map(|b| [b.low, b.high]).collect();
-    ends.sort_by(f64::total_cmp);
-    ends.dedup();
-    ends.retain(|x| *x != float.from && *x != float.to && *x != float.at);
-    ends.into_iter().enumerate().map(|(i, x)| (format!("CUT_{}", i + 1), x)).collect()
-}
-
-/// Name of the constant that holds a branch's end.
-pub(in crate::emit) fn end(float: &Float, x: f64) -> String {
-    if x == float.from {
-        "FROM".to_owned()
-    } else if x == float.to {
-        "TO".to_owned()
-    } else if x == float.at {
-        "AT".to_owned()
-    } else {
-        cuts(float).into_iter().find(|(_, cut)| *cut == x).map_or_else(|| "AT".to_owned(), |(name, _)| name)
-    }
-}
-
 fn values(float: &Float, ty: &Ident, argument: &Ident) -> Result<TokenStream> {
     let slope_doc = doc("Derivative of [`value`] with respect to the control, no check.");
     let value_doc = doc("The formula, no check.");
@@ -269,14 +245,8 @@ fn values(float: &Float, ty: &Ident, argument: &Ident) -> Result<TokenStream> {
 }
 
 fn inverses(float: &Float, ty: &Ident) -> Result<TokenStream> {
-    let mut out = inverse(float, "inverse", "that holds the operating point", &float.branches.main, ty)?;
-    let above_is_main = float.branches.above == Some(float.branches.main);
-    let below_is_main = float.branches.below == Some(float.branches.main);
-    for (name, words, branch, same) in [
-        ("inverse_below", "that ends at the turning point nearest the operating point", float.branches.below, below_is_main),
-        ("inverse_above", "that begins at the turning point nearest the operating point", float.branches.above, above_is_main),
-    ] {
-        let Some(branch) = branch else { continue };
+    let mut out = TokenStream::new();
+    for (name, words, branch, same) in branches(float) {
         out.extend(if same {
             let name = ident(name);
             let about = doc(&format!("As [`inverse`], on the stretch of the range {words}."));
@@ -326,7 +296,7 @@ fn inverses(float: &Float, ty: &Ident) -> Result<TokenStream> {
                 let mut x = 0.5 * (low + high);
                 for _ in 0..#steps {
                     let slope = slope(x);
-                    if slope > 0.0 || slope < 0.0 {
+                    if slope != 0.0 {
                         x = held(x + (value - self::value(x)) / slope, low, high);
                     }
                 }
@@ -390,7 +360,7 @@ fn inverse(float: &Float, name: &str, words: &str, branch: &Branch, ty: &Ident) 
         #[doc = " `NotANumber` or `NoSolution`."]
         pub fn #name(value: #ty) -> Result<#ty, OutOfRange> {
             let (least, most) = (self::value(#first), self::value(#last));
-            if value >= least - ROUNDING && value <= most + ROUNDING {
+            if (least - ROUNDING..=most + ROUNDING).contains(&value) {
                 if value <= least {
                     Ok(#first)
                 } else if value >= most {
