@@ -195,10 +195,8 @@ macro_rules! format {
                         let x = (at + d) as $float;
                         x > self.from && x < self.to
                     };
-                    let nearest = zeros
-                        .iter()
-                        .filter(inside)
-                        .reduce(|a, b| if b.abs() < a.abs() { b } else { a });
+                    let nearest =
+                        zeros.iter().filter(inside).reduce(|a, b| if b.abs() < a.abs() { b } else { a });
                     let point = |d: Option<f64>, end: $float| d.map_or(end, |d| (at + d) as $float);
                     // The stretch between two neighbouring cuts, or ends of the range.
                     let stretch = |low: Option<f64>, high: Option<f64>, through_at: bool| {

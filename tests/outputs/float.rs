@@ -85,11 +85,17 @@ fn c_program(stem: &str, formulas: &[Formula], ty: &str, bits: &str) -> String {
     );
     for formula in formulas {
         let name = format!("{stem}_{}", formula.measured.name);
-        let _ = writeln!(out, "memcpy(y, x, sizeof x); {name}_many(y, y, n);\nfor (i = 0; i < n; i++) {{ {ty} v = 0; {stem}_status s;");
+        let _ = writeln!(
+            out,
+            "memcpy(y, x, sizeof x); {name}_many(y, y, n);\nfor (i = 0; i < n; i++) {{ {ty} v = 0; {stem}_status s;"
+        );
         let _ = writeln!(out, "printf(\"%\" {print} \" %\" {print}, word(y[i]), word({name}_slope(x[i])));");
         let _ = writeln!(out, "s = {name}_checked(x[i], &v); show(s, v);");
         for inverse in inverses(formula) {
-            let _ = writeln!(out, "s = {name}_{inverse}(x[i], &v); show(s, v); s = {name}_{inverse}(y[i], &v); show(s, v);");
+            let _ = writeln!(
+                out,
+                "s = {name}_{inverse}(x[i], &v); show(s, v); s = {name}_{inverse}(y[i], &v); show(s, v);"
+            );
         }
         out.push_str("printf(\"\\n\"); }\n");
     }
@@ -100,7 +106,9 @@ fn c_program(stem: &str, formulas: &[Formula], ty: &str, bits: &str) -> String {
 macro_rules! reference {
     ($name:ident, $module:ident, $float:ident) => {
         fn $name(formula: &Formula, points: &[$float], out: &mut String) {
-            let (Numbers::Double(float) | Numbers::Single(float)) = &formula.numbers else { panic!("a float") };
+            let (Numbers::Double(float) | Numbers::Single(float)) = &formula.numbers else {
+                panic!("a float")
+            };
             let narrow = |list: &[f64]| list.iter().map(|c| *c as $float).collect::<Vec<_>>();
             let (a, b);
             let form = match &float.form {
@@ -160,7 +168,11 @@ fn without_nan(text: &str, wide: bool) -> String {
     let word = |w: &str| {
         let (status, bits) = w.split_once(':').map_or(("", w), |(s, b)| (s, b));
         let nan = u64::from_str_radix(bits, 16).is_ok_and(|b| {
-            if wide { f64::from_bits(b).is_nan() } else { u32::try_from(b).is_ok_and(|b| f32::from_bits(b).is_nan()) }
+            if wide {
+                f64::from_bits(b).is_nan()
+            } else {
+                u32::try_from(b).is_ok_and(|b| f32::from_bits(b).is_nan())
+            }
         });
         if nan { format!("{status}:nan") } else { w.to_owned() }
     };
@@ -172,7 +184,18 @@ fn without_nan(text: &str, wide: bool) -> String {
 
 fn points(at: f64) -> Vec<f64> {
     let mut out: Vec<f64> = (0..=1200).map(|i| at - 60.0 + 0.117 * f64::from(i)).collect();
-    out.extend([f64::NAN, f64::INFINITY, f64::NEG_INFINITY, -0.0, 0.0, at, 1e300, -1e300, 5e-324, 1458.934408104531]);
+    out.extend([
+        f64::NAN,
+        f64::INFINITY,
+        f64::NEG_INFINITY,
+        -0.0,
+        0.0,
+        at,
+        1e300,
+        -1e300,
+        5e-324,
+        1458.934408104531,
+    ]);
     out.extend((0..200).map(|i| 34.0 + 0.01 * f64::from(i)));
     out
 }
@@ -210,7 +233,11 @@ fn same_bits(format: &NumberFormat, at: f64, label: &str) {
     let mut expected = String::new();
     let mut input = String::new();
     for x in &points {
-        let _ = if wide { writeln!(input, "{:x}", x.to_bits()) } else { writeln!(input, "{:x}", (*x as f32).to_bits()) };
+        let _ = if wide {
+            writeln!(input, "{:x}", x.to_bits())
+        } else {
+            writeln!(input, "{:x}", (*x as f32).to_bits())
+        };
     }
     let narrow: Vec<f32> = points.iter().map(|x| *x as f32).collect();
     for formula in &formulas {
@@ -232,13 +259,38 @@ fn same_bits(format: &NumberFormat, at: f64, label: &str) {
         tool(path, compiler, &["-std=c99", level, "main.c", "formula.o", "-o", "from_c"]);
         assert_eq!(without_nan(&feed(&scratch, "from_c", &input), wide), expected, "{compiler} {level}");
     }
-    let everything = ["-std=c99", "-Weverything", "-Werror", "-Wno-unsafe-buffer-usage", "-Wno-unknown-warning-option", "-c", source.as_str(), "-o", "x.o"];
+    let everything = [
+        "-std=c99",
+        "-Weverything",
+        "-Werror",
+        "-Wno-unsafe-buffer-usage",
+        "-Wno-unknown-warning-option",
+        "-c",
+        source.as_str(),
+        "-o",
+        "x.o",
+    ];
     tool(path, "clang", &everything);
     tool(path, "g++", &["-x", "c++", "-fsyntax-only", "-Wall", "-Werror", &format!("{stem}.h")]);
     let rust = format!("{stem}.rs");
     for edition in ["2018", "2021", "2024"] {
-        let pedantic =
-            ["--edition", edition, "--crate-type", "lib", "--emit", "metadata", "-D", "warnings", "-D", "clippy::all", "-D", "clippy::pedantic", rust.as_str(), "-o", "x.rmeta"];
+        let pedantic = [
+            "--edition",
+            edition,
+            "--crate-type",
+            "lib",
+            "--emit",
+            "metadata",
+            "-D",
+            "warnings",
+            "-D",
+            "clippy::all",
+            "-D",
+            "clippy::pedantic",
+            rust.as_str(),
+            "-o",
+            "x.rmeta",
+        ];
         tool(path, "clippy-driver", &pedantic);
     }
 }
@@ -254,4 +306,3 @@ fn single_precision_gives_the_same_bits_in_rust_c_and_the_runtime() {
     same_bits(&NumberFormat::F32, 0.0, "f32");
     same_bits(&NumberFormat::F32, 12.3, "f32-at");
 }
-

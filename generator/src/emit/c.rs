@@ -10,7 +10,6 @@ use crate::diagnostic::{Error, Result};
 use crate::formula::{Expr, Float, FloatForm, Formula, Numbers, horner, horner_slope};
 use crate::outcome::Outcome;
 
-
 /// Header and source.
 ///
 /// # Errors
@@ -129,9 +128,17 @@ fn constants(outcome: &Outcome, formula: &Formula, float: &Float, wide: bool) ->
     push("TO", format!("Upper end of the range, in {control_words}."), number(float.to, wide));
     push("AT", format!("Operating point, in {control_words}."), number(float.at, wide));
     push("E0", format!("Level at the operating point, in {unit_words}, a double."), number(float.e0, true));
-    push("ROUNDING", format!("Bound on the rounding of the value, in {unit_words}."), number(float.rounding, wide));
+    push(
+        "ROUNDING",
+        format!("Bound on the rounding of the value, in {unit_words}."),
+        number(float.rounding, wide),
+    );
     if !wide {
-        push("PHYSICAL_FROM", "Lower end of the range as a double.".to_owned(), number(formula.valid.from, true));
+        push(
+            "PHYSICAL_FROM",
+            "Lower end of the range as a double.".to_owned(),
+            number(formula.valid.from, true),
+        );
         push("PHYSICAL_TO", "Upper end of the range as a double.".to_owned(), number(formula.valid.to, true));
     }
     match &float.form {
@@ -148,8 +155,10 @@ fn constants(outcome: &Outcome, formula: &Formula, float: &Float, wide: bool) ->
                 push(&format!("MEAN_{k}"), about, number(*value, wide));
             }
             for (k, value) in half_gap_squared.iter().enumerate() {
-                let about =
-                    format!("Squared half gap: coefficient of d^{k}, in {}.", coefficient_unit(&squared, control, k));
+                let about = format!(
+                    "Squared half gap: coefficient of d^{k}, in {}.",
+                    coefficient_unit(&squared, control, k)
+                );
                 push(&format!("HALF_GAP_SQUARED_{k}"), about, number(*value, wide));
             }
             push("SIGN", "Sign of the half gap.".to_owned(), number(if *upper { 1.0 } else { -1.0 }, wide));
@@ -168,9 +177,8 @@ fn whole(wide: bool) -> impl Fn(u32) -> String {
 /// Statements of value and slope.
 fn bodies(float: &Float, stem: &str, upper: &str, argument: &str, wide: bool) -> (Vec<String>, Vec<String>) {
     let ty = if wide { "double" } else { "float" };
-    let print = |expr: &Option<Expr>| {
-        expr.as_ref().map_or_else(|| number(0.0, wide), |e| e.print(&whole(wide)))
-    };
+    let print =
+        |expr: &Option<Expr>| expr.as_ref().map_or_else(|| number(0.0, wide), |e| e.print(&whole(wide)));
     let offset = |exprs: &[&Option<Expr>]| {
         if exprs.iter().any(|e| e.as_ref().is_some_and(|e| e.names().contains(&"d"))) {
             format!("const {ty} d = {argument} - {upper}_AT;")
@@ -182,7 +190,9 @@ fn bodies(float: &Float, stem: &str, upper: &str, argument: &str, wide: bool) ->
         FloatForm::Polynomial(c) => {
             let names = names(upper, "C", c.len());
             let (value, slope) = (horner(&names, c, "d"), horner_slope(&names, c, "d"));
-            let body = |expr: Option<Expr>| vec![offset(&[&expr]), String::new(), format!("return {};", print(&expr))];
+            let body = |expr: Option<Expr>| {
+                vec![offset(&[&expr]), String::new(), format!("return {};", print(&expr))]
+            };
             (body(value), body(slope))
         }
         FloatForm::Paired { mean, half_gap_squared, upper: plus } => {

@@ -26,7 +26,13 @@ pub struct Entry<'a> {
 /// - `stem`: name of the file without its ending; `format`: words for the
 ///   number format; `evaluation`: a sentence on how numbers are computed.
 #[must_use]
-pub fn lines(outcome: &Outcome, stem: &str, format: &str, evaluation: &str, entries: &[Entry<'_>]) -> Vec<String> {
+pub fn lines(
+    outcome: &Outcome,
+    stem: &str,
+    format: &str,
+    evaluation: &str,
+    entries: &[Entry<'_>],
+) -> Vec<String> {
     let mut out = Vec::new();
     let paragraph = |out: &mut Vec<String>, text: &str| out.extend(wrap(text, WIDTH));
     let summary = plain(&outcome.summary);
@@ -95,7 +101,9 @@ fn formula(outcome: &Outcome, entry: &Entry<'_>) -> Vec<String> {
         Form::Polynomial { coefficients } => {
             out.push(format!("  {name} = {}, d = {offset}", nested("c", coefficients.len())));
             let uncertainty = |power: usize| {
-                if measured.zero_by_symmetry.contains(&power) && coefficients.get(power).is_some_and(|c| *c == 0.0) {
+                if measured.zero_by_symmetry.contains(&power)
+                    && coefficients.get(power).is_some_and(|c| *c == 0.0)
+                {
                     "exact, by symmetry".to_owned()
                 } else {
                     measured.uncertainty.get(power).map_or(String::new(), |u| format!("+- {}", rough(*u)))
@@ -105,7 +113,9 @@ fn formula(outcome: &Outcome, entry: &Entry<'_>) -> Vec<String> {
         }
         Form::Paired { mean, half_gap_squared, sign, partner } => {
             let sign = if *sign > 0.0 { '+' } else { '-' };
-            out.push(format!("  {name} = mean {sign} sqrt(half_gap_squared), d = {offset} (paired with level {partner})"));
+            out.push(format!(
+                "  {name} = mean {sign} sqrt(half_gap_squared), d = {offset} (paired with level {partner})"
+            ));
             out.push(format!("  mean = {}", nested("m", mean.len())));
             out.push(format!("  half_gap_squared = {}, never below 0", nested("h", half_gap_squared.len())));
             let none = |_: usize| String::new();
@@ -185,14 +195,17 @@ fn table(
     control_unit: &str,
     uncertainty: &dyn Fn(usize) -> String,
 ) -> Vec<String> {
-    let numbers: Vec<String> = coefficients.iter().map(|c| if *c == 0.0 { "0".into() } else { real(*c) }).collect();
+    let numbers: Vec<String> =
+        coefficients.iter().map(|c| if *c == 0.0 { "0".into() } else { real(*c) }).collect();
     let width = numbers.iter().map(String::len).max().unwrap_or(0);
     numbers
         .iter()
         .enumerate()
         .map(|(power, number)| {
             let unit = coefficient_unit(&measured.unit, control_unit, power);
-            format!("  {letter}{power} = {number:<width$}  {:<19} {unit}", uncertainty(power)).trim_end().to_owned()
+            format!("  {letter}{power} = {number:<width$}  {:<19} {unit}", uncertainty(power))
+                .trim_end()
+                .to_owned()
         })
         .collect()
 }

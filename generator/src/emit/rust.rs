@@ -66,7 +66,8 @@ fn spaced(text: &str) -> String {
         let bare = line.trim_start();
         let attribute = bare.starts_with("///") || bare.starts_with("#[");
         let item = attribute
-            || ["pub ", "const ", "fn ", "use "].iter().any(|word| bare.starts_with(word)) && !bare.ends_with(',');
+            || ["pub ", "const ", "fn ", "use "].iter().any(|word| bare.starts_with(word))
+                && !bare.ends_with(',');
         let closes = previous.trim_start() == "}" || previous.trim_end().ends_with(';');
         let deep = line.len() - bare.len() > 4;
         if item && !attributes && closes && !deep {
@@ -84,7 +85,10 @@ fn module(outcome: &Outcome, formula: &Formula) -> Result<TokenStream> {
     match &formula.numbers {
         Numbers::Double(float) => float::module(outcome, formula, float, true),
         Numbers::Single(float) => float::module(outcome, formula, float, false),
-        Numbers::Fixed(fixed) => { let _ = fixed; Err(Error::internal("fixed")) },
+        Numbers::Fixed(fixed) => {
+            let _ = fixed;
+            Err(Error::internal("fixed"))
+        }
     }
 }
 

@@ -117,7 +117,8 @@ pub fn unit_name(unit: &str) -> String {
 /// Unit of the coefficient of `d^power`.
 #[must_use]
 pub fn coefficient_unit(unit: &str, control: &str, power: usize) -> String {
-    let control = if control.contains(['/', '*', '^']) { format!("({})", plain(control)) } else { plain(control) };
+    let control =
+        if control.contains(['/', '*', '^']) { format!("({})", plain(control)) } else { plain(control) };
     match (power, unit, control.as_str()) {
         (0, ..) => unit_name(unit),
         (_, _, "1") => unit_name(unit),

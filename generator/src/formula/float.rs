@@ -112,11 +112,9 @@ fn build(
     let at = held(&control.at);
     let form = match &measured.form {
         Form::Polynomial { coefficients } => FloatForm::Polynomial(all(coefficients)),
-        Form::Paired { mean, half_gap_squared, sign, .. } => FloatForm::Paired {
-            mean: all(mean),
-            half_gap_squared: all(half_gap_squared),
-            upper: *sign > 0.0,
-        },
+        Form::Paired { mean, half_gap_squared, sign, .. } => {
+            FloatForm::Paired { mean: all(mean), half_gap_squared: all(half_gap_squared), upper: *sign > 0.0 }
+        }
     };
     let finite = match &form {
         FloatForm::Polynomial(c) => c.iter().all(|c| c.is_finite()),
@@ -163,7 +161,8 @@ fn single_branches(form: &FloatForm, from: f64, to: f64, at: f64, rounding: f64)
         through_at: b.through_at,
     };
     let branches = |form: single::Form<'_>| {
-        single::Formula { from: from as f32, to: to as f32, at: at as f32, rounding: rounding as f32, form }.branches()
+        single::Formula { from: from as f32, to: to as f32, at: at as f32, rounding: rounding as f32, form }
+            .branches()
     };
     let found = match form {
         FloatForm::Polynomial(c) => branches(single::Form::Polynomial(&narrow(c))),
@@ -203,14 +202,7 @@ fn single_up(x: f64) -> f64 {
 }
 
 /// Bound on |computed value - exact value of the record's formula| over the range.
-fn value_bound(
-    binary: Binary,
-    exact: &Form,
-    held: &FloatForm,
-    at: f64,
-    at_held: f64,
-    valid: &Valid,
-) -> f64 {
+fn value_bound(binary: Binary, exact: &Form, held: &FloatForm, at: f64, at_held: f64, valid: &Valid) -> f64 {
     let mut worst = 0.0_f64;
     for d in bound::cells(valid.from - at, valid.to - at) {
         let d_error = bound::offset_error(binary, at, at_held, d);
@@ -244,9 +236,13 @@ fn inverse_bound(binary: Binary, float: &Float, rounding: f64) -> f64 {
     let (low, high) = (float.from - float.at, float.to - float.at);
     let reach = low.abs().max(high.abs());
     let farthest = float.from.abs().max(float.to.abs()).max(float.at.abs());
-    let derivative = |c: &[f64]| c.iter().enumerate().skip(1).map(|(k, c)| k as f64 * c).collect::<Vec<f64>>();
+    let derivative =
+        |c: &[f64]| c.iter().enumerate().skip(1).map(|(k, c)| k as f64 * c).collect::<Vec<f64>>();
     let size = |c: &[f64]| {
-        bound::cells(low, high).into_iter().map(|d| bound::nested(binary, c, c, d, 0.0).0.size()).fold(0.0, f64::max)
+        bound::cells(low, high)
+            .into_iter()
+            .map(|d| bound::nested(binary, c, c, d, 0.0).0.size())
+            .fold(0.0, f64::max)
     };
     // An answer is rounded to the format, where the value moves with the slope.
     let (slope, curvature) = match &float.form {
@@ -276,7 +272,8 @@ fn inverse_bound(binary: Binary, float: &Float, rounding: f64) -> f64 {
             [_, c1, c2, ..] => {
                 // The discriminant's error acts like an error of the value ...
                 let rise = slope * reach;
-                let shifted = unit * (c1 * c1 / (4.0 * c2.abs()) + 4.0 * rise + c1 * c1 / (4.0 * c2.abs()) + rise);
+                let shifted =
+                    unit * (c1 * c1 / (4.0 * c2.abs()) + 4.0 * rise + c1 * c1 / (4.0 * c2.abs()) + rise);
                 // ... or, far from the vertex, like a relative error of the offset.
                 let least = (c1.abs() - 2.0 * c2.abs() * reach).max(0.0);
                 let discriminant = least * least;
@@ -290,10 +287,12 @@ fn inverse_bound(binary: Binary, float: &Float, rounding: f64) -> f64 {
             _ => 0.0,
         },
         _ => {
-            let halvings = if binary.digits == DOUBLE.digits { double::BISECTIONS } else { single::BISECTIONS };
+            let halvings =
+                if binary.digits == DOUBLE.digits { double::BISECTIONS } else { single::BISECTIONS };
             let width = (float.to - float.from) * libm::scalbn(1.0, -(halvings as i32));
             // After the last step: at worst the bracket times the slope, where the curvature has no bound.
-            let searched = if curvature.is_finite() { 2.0 * curvature * width * width } else { slope * width };
+            let searched =
+                if curvature.is_finite() { 2.0 * curvature * width * width } else { slope * width };
             searched + slope * 2.0 * unit * farthest
         }
     };
@@ -317,7 +316,10 @@ fn too_coarse(measured: &FormulaOutcome, rounding: f64, place: Option<&Place>, w
         "rounding",
         format!("`{name}` cannot keep its tolerance in {format} precision"),
         place,
-        format!("a rounding of up to {rounding:.2e}{unit} against a tolerance of {:?}{unit}", measured.tolerance),
+        format!(
+            "a rounding of up to {rounding:.2e}{unit} against a tolerance of {:?}{unit}",
+            measured.tolerance
+        ),
         action.to_owned(),
     )
 }

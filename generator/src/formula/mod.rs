@@ -99,7 +99,8 @@ impl Formula {
             NumberFormat::F64 => float::double(measured, control, tolerance_place, own_range),
             NumberFormat::F32 => float::single(measured, control, tolerance_place, own_range),
             NumberFormat::Fixed { control: count, value } => {
-                { let _ = (count, value); Err(Error::internal("fixed point is being built")) }
+                let _ = (count, value);
+                Err(Error::internal("fixed point is being built"))
             }
         }
     }

@@ -64,8 +64,11 @@ impl Expr {
                 format!("{} + {right}", a.print(whole))
             }
             Self::Mul(a, b) => {
-                let left =
-                    if matches!(**a, Self::Add(..)) { format!("({})", a.print(whole)) } else { a.print(whole) };
+                let left = if matches!(**a, Self::Add(..)) {
+                    format!("({})", a.print(whole))
+                } else {
+                    a.print(whole)
+                };
                 let right = if matches!(**b, Self::Add(..) | Self::Mul(..)) {
                     format!("({})", b.print(whole))
                 } else {
@@ -152,12 +155,12 @@ mod tests {
     #[test]
     fn slopes_multiply_by_the_power_first() {
         let print = |c: &[f64]| horner_slope(&names(), c, "d").map(|e| e.print(&whole));
-        assert_eq!(
-            print(&[1.0, 1.0, 1.0, 1.0]).as_deref(),
-            Some("c1 + d * (2.0 * c2 + d * (3.0 * c3))")
-        );
+        assert_eq!(print(&[1.0, 1.0, 1.0, 1.0]).as_deref(), Some("c1 + d * (2.0 * c2 + d * (3.0 * c3))"));
         assert_eq!(print(&[1.0, 0.0, 1.0]).as_deref(), Some("c1 + d * (2.0 * c2)"));
-        assert_eq!(print(&[1.0, 0.0, 1.0, 0.0, 1.0]).as_deref(), Some("c1 + d * (2.0 * c2 + d * (d * (4.0 * c4)))"));
+        assert_eq!(
+            print(&[1.0, 0.0, 1.0, 0.0, 1.0]).as_deref(),
+            Some("c1 + d * (2.0 * c2 + d * (d * (4.0 * c4)))")
+        );
         assert_eq!(print(&[1.0]), None);
     }
 }

@@ -7,7 +7,11 @@ use shiftwright_runtime::double::Branch;
 fn number(value: f64, wide: bool) -> Result<TokenStream> {
     let text = if wide { real(value.abs()) } else { real_single(value.abs()) };
     let literal: Literal = text.parse().map_err(Error::internal)?;
-    Ok(if value.is_sign_negative() { quote! { -#literal } } else { quote! { #literal } })
+    Ok(if value.is_sign_negative() {
+        quote! { -#literal }
+    } else {
+        quote! { #literal }
+    })
 }
 
 fn numbers(values: &[f64], wide: bool) -> Result<Vec<TokenStream>> {
@@ -52,9 +56,13 @@ pub(super) fn module(outcome: &Outcome, formula: &Formula, float: &Float, wide: 
     let functions = values(float, &ty, &argument)?;
     let inverses = inverses(float, &ty)?;
     let name = ident(&formula.measured.name);
-    let about = doc(&format!("The formula `{}` in {unit}, its control in {control_unit}.", formula.measured.name));
-    let imports =
-        if float.roots() { quote! { use super::{OutOfRange, root}; } } else { quote! { use super::OutOfRange; } };
+    let about =
+        doc(&format!("The formula `{}` in {unit}, its control in {control_unit}.", formula.measured.name));
+    let imports = if float.roots() {
+        quote! { use super::{OutOfRange, root}; }
+    } else {
+        quote! { use super::OutOfRange; }
+    };
     Ok(quote! {
         #about
         #[allow(dead_code, clippy::unreadable_literal)]
@@ -89,7 +97,13 @@ pub(super) fn module(outcome: &Outcome, formula: &Formula, float: &Float, wide: 
     })
 }
 
-fn constants(outcome: &Outcome, formula: &Formula, float: &Float, wide: bool, ty: &Ident) -> Result<TokenStream> {
+fn constants(
+    outcome: &Outcome,
+    formula: &Formula,
+    float: &Float,
+    wide: bool,
+    ty: &Ident,
+) -> Result<TokenStream> {
     let measured = &formula.measured;
     let (unit, control_unit) = (unit_name(&measured.unit), unit_name(&outcome.control.unit));
     let (from, to, at) = (number(float.from, wide)?, number(float.to, wide)?, number(float.at, wide)?);
@@ -122,17 +136,26 @@ fn constants(outcome: &Outcome, formula: &Formula, float: &Float, wide: bool, ty
         });
     }
     let powers = |unit: &str, count: usize| {
-        (0..count).map(|k| format!("`{}`", coefficient_unit(unit, &outcome.control.unit, k))).collect::<Vec<_>>().join(", ")
+        (0..count)
+            .map(|k| format!("`{}`", coefficient_unit(unit, &outcome.control.unit, k)))
+            .collect::<Vec<_>>()
+            .join(", ")
     };
     match &float.form {
         FloatForm::Polynomial(c) => {
-            let about = doc(&format!("Coefficients by rising power of the offset, in {}.", powers(&measured.unit, c.len())));
+            let about = doc(&format!(
+                "Coefficients by rising power of the offset, in {}.",
+                powers(&measured.unit, c.len())
+            ));
             let (list, n) = (numbers(c, wide)?, c.len());
             out.extend(quote! { #about pub const COEFFICIENTS: [#ty; #n] = [#(#list),*]; });
         }
         FloatForm::Paired { mean, half_gap_squared, upper } => {
             let squared = if measured.unit == "1" { "1".to_owned() } else { format!("{}^2", measured.unit) };
-            let mean_doc = doc(&format!("Mean by rising power of the offset, in {}.", powers(&measured.unit, mean.len())));
+            let mean_doc = doc(&format!(
+                "Mean by rising power of the offset, in {}.",
+                powers(&measured.unit, mean.len())
+            ));
             let h_doc = doc(&format!(
                 "Squared half gap by rising power of the offset, in {}.",
                 powers(&squared, half_gap_squared.len())
@@ -169,14 +192,17 @@ fn values(float: &Float, ty: &Ident, argument: &Ident) -> Result<TokenStream> {
             let (value, slope) = (horner(&names, c, "d"), horner_slope(&names, c, "d"));
             let body = |expr: &Option<Expr>| -> Result<(TokenStream, TokenStream)> {
                 let (argument, offset) = offset(argument, &[expr]);
-                Ok((argument, match expr {
-                    Some(expr) => {
-                        let unpack = unpack("c", "COEFFICIENTS", c.len(), &expr.names());
-                        let expr = expression(expr)?;
-                        quote! { #unpack #offset #expr }
-                    }
-                    None => quote! { 0.0 },
-                }))
+                Ok((
+                    argument,
+                    match expr {
+                        Some(expr) => {
+                            let unpack = unpack("c", "COEFFICIENTS", c.len(), &expr.names());
+                            let expr = expression(expr)?;
+                            quote! { #unpack #offset #expr }
+                        }
+                        None => quote! { 0.0 },
+                    },
+                ))
             };
             let ((a, value), (b, slope)) = (body(&value)?, body(&slope)?);
             Ok(quote! {
@@ -206,7 +232,11 @@ fn values(float: &Float, ty: &Ident, argument: &Ident) -> Result<TokenStream> {
                 out
             };
             let written = |expr: &Option<Expr>| expr.as_ref().map_or_else(|| Ok(quote! { 0.0 }), expression);
-            let sign = if *upper { quote! { + } } else { quote! { - } };
+            let sign = if *upper {
+                quote! { + }
+            } else {
+                quote! { - }
+            };
             let (mean_value, gap_value) = (written(&trees.0)?, written(&trees.1)?);
             let (mean_slope, gap_slope) = (written(&slopes.0)?, written(&slopes.1)?);
             let (a, offset_a) = offset(argument, &[&trees.0, &trees.1]);
@@ -322,12 +352,20 @@ fn inverse(float: &Float, name: &str, words: &str, branch: &Branch, ty: &Ident) 
                 }
                 (_, [_, c1, c2, ..]) if *c1 == 0.0 => {
                     let unpack = unpack("c", "COEFFICIENTS", n, &["c0", "c2"]);
-                    let sign = if rising == (*c2 > 0.0) { quote! { + } } else { quote! { - } };
+                    let sign = if rising == (*c2 > 0.0) {
+                        quote! { + }
+                    } else {
+                        quote! { - }
+                    };
                     quote! { #unpack Ok(held(AT #sign root((value - c0) / c2), #low, #high)) }
                 }
                 (_, [_, c1, ..]) => {
                     let unpack = unpack("c", "COEFFICIENTS", n, &["c0", "c1", "c2"]);
-                    let sign = if rising { quote! {} } else { quote! { - } };
+                    let sign = if rising {
+                        quote! {}
+                    } else {
+                        quote! { - }
+                    };
                     // The quotient in which nothing cancels.
                     let x = if (*c1 > 0.0) == rising {
                         quote! { AT + 2.0 * rise / (c1 + slope) }
@@ -346,11 +384,10 @@ fn inverse(float: &Float, name: &str, words: &str, branch: &Branch, ty: &Ident) 
         }
         _ => quote! { Ok(held(search(value, #low, #high, #rising), #low, #high)) },
     };
-    let about = doc(&format!("Control at which the formula gives `value`, on the stretch of the range {words}."));
-    let way = doc(&format!(
-        "There it {} from [`{low}`] to [`{high}`].",
-        if rising { "rises" } else { "falls" }
-    ));
+    let about =
+        doc(&format!("Control at which the formula gives `value`, on the stretch of the range {words}."));
+    let way =
+        doc(&format!("There it {} from [`{low}`] to [`{high}`].", if rising { "rises" } else { "falls" }));
     Ok(quote! {
         #about
         #way
