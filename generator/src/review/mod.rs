@@ -5,5 +5,11 @@
 //!
 //! Not here: files on disk, the terminal, solving.
 
+pub mod check;
+pub mod compare;
+pub mod edits;
+pub mod numbers;
+pub mod table;
+
 #[cfg(test)]
 pub(crate) mod example;
