@@ -197,6 +197,36 @@ pub struct OutputOutcome {
     pub formulas: Vec<OutputFormula>,
 }
 
+/// One envelope of a picture.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Envelope {
+    /// Level number in its block.
+    pub level: usize,
+    /// Energy at the operating point, picture's unit.
+    pub energy: f64,
+    /// Amplitude at each position; any scale.
+    pub amplitude: Vec<f64>,
+}
+
+/// What is drawn of one system along its coordinate. Not part of the record.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Picture {
+    /// System's name.
+    pub system: String,
+    /// Name and unit of the coordinate, for example `z (nm)`.
+    pub coordinate: String,
+    /// Unit of the energies.
+    pub unit: String,
+    /// Positions, rising; a face stands twice.
+    pub position: Vec<f64>,
+    /// Control values at which the edge is given: lower end of the range, operating point, upper end.
+    pub controls: [f64; 3],
+    /// Potential energy at each position, field included, per control value.
+    pub edges: [Vec<f64>; 3],
+    /// Envelopes of the levels that formulas use.
+    pub envelopes: Vec<Envelope>,
+}
+
 /// A whole run.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Outcome {

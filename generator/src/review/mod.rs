@@ -8,7 +8,10 @@
 pub mod check;
 pub mod compare;
 pub mod edits;
+pub mod explain;
 pub mod numbers;
+pub mod plot;
+pub mod report;
 pub mod table;
 
 #[cfg(test)]

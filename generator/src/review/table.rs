@@ -157,7 +157,7 @@ mod tests {
         let text = table(&outcome, "specs/generated");
         assert!(text.lines().all(|line| line.chars().count() <= WIDTH), "{text}");
         for part in
-            ["1458.934 meV", "meV/(kV/cm)^2", "0 by symmetry", "shutter_f64.rs", "(even)", "partner level 2"]
+            ["1458.934 meV", "meV/(kV/cm)^2", "0 by symmetry", "shutter_f64.rs", "(even)", "partner 2"]
         {
             assert!(text.contains(part), "{part}: {text}");
         }
