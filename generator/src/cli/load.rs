@@ -1,0 +1,94 @@
+//! A spec and the files it names, from disk.
+
+use std::path::{Path, PathBuf};
+
+use crate::diagnostic::{Diagnostic, Error, Result};
+use crate::emit::Source;
+use crate::outcome::{Outcome, Picture};
+use crate::spec::Spec;
+
+use super::files;
+
+/// A spec as it was read.
+pub struct Loaded {
+    /// The checked spec.
+    pub spec: Spec,
+    /// Its text.
+    pub text: String,
+    /// Its path, as the user gave it.
+    pub path: PathBuf,
+}
+
+impl Loaded {
+    /// Line of a formula's name, from 1; 1 if there is no such formula.
+    #[must_use]
+    pub fn formula_line(&self, name: &str) -> usize {
+        let place = self.spec.formulas.iter().find(|f| f.name == name).map(|f| f.place.start);
+        let head = place.and_then(|start| self.text.get(..start));
+        head.map_or(1, |head| head.matches('\n').count() + 1)
+    }
+
+    /// Folder of the generated files: `out`, or `generated` beside the spec.
+    #[must_use]
+    pub fn folder(&self, out: Option<&Path>) -> PathBuf {
+        match (out, self.path.parent()) {
+            (Some(out), _) => out.to_owned(),
+            (None, Some(parent)) => parent.join("generated"),
+            (None, None) => PathBuf::from("generated"),
+        }
+    }
+}
+
+/// A finished run: what the record says, and the files with the record last.
+pub struct Run {
+    /// The outcome, outputs filled in.
+    pub outcome: Outcome,
+    /// The files.
+    pub sources: Vec<Source>,
+}
+
+/// Text of a spec from disk.
+///
+/// # Errors
+/// The system's refusal.
+pub fn text_of(path: &Path) -> Result<Vec<u8>> {
+    files::read(path)?.ok_or_else(|| {
+        Error::system(
+            Diagnostic::new("no-file", format!("{}: there is no such file", path.display()))
+                .action("give the path of a spec; `shiftwright new layers well.yaml` writes one"),
+        )
+    })
+}
+
+/// Reads and checks a spec.
+///
+/// # Errors
+/// The spec's mistakes; the system's refusal.
+pub fn load(path: &Path) -> Result<Loaded> {
+    let _bytes = text_of(path)?;
+    Err(Error::internal("this build holds no reader of specs yet"))
+}
+
+/// Solves a spec and emits its files.
+///
+/// # Errors
+/// What the stages return.
+pub fn run(_spec: &Spec) -> Result<Run> {
+    Err(Error::internal("this build holds no pipeline yet"))
+}
+
+/// Solves a spec without emitting files.
+///
+/// # Errors
+/// What the stages return.
+pub fn solve(spec: &Spec) -> Result<Outcome> {
+    run(spec).map(|run| run.outcome)
+}
+
+/// What is drawn of a spec's systems.
+///
+/// # Errors
+/// What the stages return.
+pub fn pictures(_spec: &Spec, _outcome: &Outcome) -> Result<Vec<Picture>> {
+    Ok(Vec::new())
+}
