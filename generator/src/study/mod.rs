@@ -1,1 +1,3 @@
 //! Families, sweeps and sensitivities: many runs of the pipeline.
+
+pub mod sweep;
