@@ -2,7 +2,7 @@
 
 use std::path::PathBuf;
 
-use clap::{Parser, Subcommand, ValueEnum};
+use clap::{Args, Parser, Subcommand, ValueEnum};
 use clap_complete::Shell;
 
 /// The level of a quantum system as a short formula of one control, with the
@@ -33,6 +33,28 @@ pub enum StarterKind {
     Matrix,
     /// A carrier in concentric shells
     Radial,
+}
+
+/// Options of `sweep`.
+#[derive(Args)]
+pub struct SweepArguments {
+    /// Spec file
+    pub spec: PathBuf,
+    /// NAME=FROM:TO:COUNT, NAME=normal(MEAN, DEVIATION) or NAME=uniform(FROM, TO)
+    #[arg(long, required = true, value_name = "NAME=VALUES")]
+    pub vary: Vec<String>,
+    /// How often each grid point is drawn
+    #[arg(long, value_name = "COUNT")]
+    pub draws: Option<u64>,
+    /// Seed of the draws
+    #[arg(long, value_name = "N", default_value_t = 1)]
+    pub seed: u64,
+    /// Do the K-th of N parts only; `auto` reads the index of a job array
+    #[arg(long, value_name = "K/N")]
+    pub slice: Option<String>,
+    /// Table to write; its ending, .csv or .parquet, chooses the format
+    #[arg(short, long, value_name = "FILE")]
+    pub out: PathBuf,
 }
 
 /// The commands.
@@ -102,6 +124,13 @@ pub enum Command {
         #[arg(long, value_name = "OLD")]
         against: Option<PathBuf>,
     },
+    /// Coefficients and range over a grid of constants or over random draws
+    #[command(after_help = "An interrupted sweep goes on where it stopped when it is called \
+                            again. Slices of a CSV\ntable are joined by\n  awk 'NR == 1 || FNR > \
+                            1' part1.csv part2.csv > all.csv\nIn a job array, `--slice auto/N` \
+                            takes K from SLURM_ARRAY_TASK_ID or\nJOB_COMPLETION_INDEX.\n\nExample:\n  \
+                            shiftwright sweep well.yaml --vary 'width=7 nm:9 nm:5' -o widths.csv")]
+    Sweep(SweepArguments),
     /// Write a commented starter spec
     #[command(after_help = "Example:\n  shiftwright new layers well.yaml")]
     New {

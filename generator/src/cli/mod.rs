@@ -17,6 +17,7 @@ mod message;
 mod print;
 mod report;
 mod starter;
+mod sweep;
 
 use std::process::ExitCode;
 
@@ -59,6 +60,7 @@ fn run(command: &Command) -> Ended {
             print::result(&String::from_utf8_lossy(&text))
         }
         Command::Manual => manual::manual(),
+        Command::Sweep(arguments) => sweep::sweep(arguments),
         Command::Report { spec, out, against } => report::report(spec, out, against.as_deref()),
     }
 }

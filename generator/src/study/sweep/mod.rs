@@ -90,8 +90,6 @@ pub struct Row {
     pub values: Vec<f64>,
     /// Numbers of the formulas; `None` where the spec gave no formula there.
     pub numbers: Option<Vec<f64>>,
-    /// True if every formula holds over the whole wanted range.
-    pub whole: bool,
 }
 
 impl Row {
@@ -106,6 +104,23 @@ impl Row {
         }
         cells.join(",")
     }
+}
+
+/// Whether every formula of a row holds over the whole wanted range. Ends are
+/// rounded inwards to seven digits, so a millionth of the range is let pass.
+#[must_use]
+pub fn holds(columns: &[Column], cells: &[Option<f64>], within: (f64, f64)) -> bool {
+    let room = 1e-6 * (within.1 - within.0);
+    columns.iter().zip(cells).all(|(column, cell)| {
+        let reaches = |test: &dyn Fn(f64) -> bool| cell.is_some_and(test);
+        if column.name.ends_with(".from") {
+            reaches(&|value| value <= within.0 + room)
+        } else if column.name.ends_with(".to") {
+            reaches(&|value| value >= within.1 - room)
+        } else {
+            true
+        }
+    })
 }
 
 /// Runs one spec text.
@@ -133,16 +148,10 @@ pub fn rows(
                 })
                 .collect();
             let wanted = columns.len() - plan.vary.len();
-            let (numbers, whole) = match run(&template.fill(&texts)) {
-                Ok(outcome) => {
-                    let within = |f: &FormulaOutcome| f.valid.limited_by.iter().all(|w| w == "within");
-                    let list: Vec<f64> = outcome.formulas.iter().flat_map(numbers).collect();
-                    ((list.len() == wanted).then_some(list), outcome.formulas.iter().all(within))
-                }
-                Err(_) => (None, false),
-            };
-            let whole = whole && numbers.is_some();
-            Row { values, numbers, whole }
+            let numbers = run(&template.fill(&texts))
+                .ok()
+                .map(|outcome| outcome.formulas.iter().flat_map(numbers).collect::<Vec<f64>>());
+            Row { values, numbers: numbers.filter(|list| list.len() == wanted) }
         })
         .collect()
 }
@@ -183,6 +192,17 @@ mod tests {
             }
         }
         out
+    }
+
+    #[test]
+    fn a_row_counts_as_whole_only_if_both_ends_reach_the_wanted_range() {
+        let column = |name: &str| Column { name: name.to_owned(), unit: "T".to_owned() };
+        let columns = [column("w"), column("a.c0"), column("a.from"), column("a.to")];
+        let row = |from, to| [Some(1.0), None, from, to];
+        assert!(holds(&columns, &row(Some(-6.0), Some(5.999_999)), (-6.0, 6.0)));
+        assert!(!holds(&columns, &row(Some(-6.0), Some(5.9)), (-6.0, 6.0)));
+        assert!(!holds(&columns, &row(Some(-5.9), Some(6.0)), (-6.0, 6.0)));
+        assert!(!holds(&columns, &row(None, None), (-6.0, 6.0)));
     }
 
     #[test]
