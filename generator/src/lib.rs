@@ -30,5 +30,6 @@ pub mod spec;
 pub mod study;
 pub mod units;
 
+pub use cli::{build_script, generated};
 pub use diagnostic::{Diagnostic, Error, Result};
 pub use outcome::Outcome;

@@ -1,1 +1,3 @@
 //! The command line as its users meet it.
+
+mod calls;

@@ -13,6 +13,13 @@ const SHOWN: usize = 100;
 
 /// Prints the messages of an error; gives its exit status.
 pub fn show(error: &Error) -> u8 {
+    print(&colored(&text(error)));
+    error.exit_status()
+}
+
+/// The messages of an error, with the lines that they speak of.
+#[must_use]
+pub fn text(error: &Error) -> String {
     let mut texts = BTreeMap::new();
     let mut out = String::new();
     for diagnostic in error.diagnostics() {
@@ -25,8 +32,7 @@ pub fn show(error: &Error) -> u8 {
         let text = diagnostic.place.as_ref().and_then(|p| texts.get(&p.file)?.as_deref());
         out.push_str(&render(diagnostic, text));
     }
-    print(&colored(&out));
-    error.exit_status()
+    out
 }
 
 /// Prints to standard error; nobody is left to hear of a failure.

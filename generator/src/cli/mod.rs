@@ -11,6 +11,7 @@ mod compare;
 mod explain;
 mod files;
 mod generate;
+mod library;
 mod load;
 mod manual;
 mod message;
@@ -26,8 +27,7 @@ use clap::{CommandFactory, Parser};
 use crate::diagnostic::Error;
 use arguments::{Arguments, Command};
 
-pub use files::write_set;
-pub use load::{Loaded, load};
+pub use library::{build_script, generated};
 
 /// How a command ended.
 type Ended = std::result::Result<u8, Error>;
