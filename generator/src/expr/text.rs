@@ -17,6 +17,9 @@ pub const LONGEST: usize = 10_000;
 /// Deepest nesting of brackets, signs and powers.
 pub const DEEPEST: usize = 200;
 
+/// Longest name, in characters.
+const LONGEST_NAME: usize = 40;
+
 /// A parsed expression.
 #[derive(Clone, Debug, PartialEq)]
 pub struct Expression {
@@ -150,6 +153,11 @@ fn lex(text: &str) -> Result<Vec<Token>, Fault> {
         }
         let (kind, length) = if c.is_ascii_alphabetic() {
             let length = rest.find(|c: char| !c.is_ascii_alphanumeric() && c != '_').unwrap_or(rest.len());
+            if length > LONGEST_NAME {
+                return Err(Fault::new("expression-limit", place..place + length, "this name is too long")
+                    .found(format!("{length} characters"))
+                    .expected(format!("at most {LONGEST_NAME}")));
+            }
             (Kind::Name(rest[..length].to_owned()), length)
         } else if c.is_ascii_digit()
             || (c == '.'
@@ -543,6 +551,7 @@ mod tests {
         assert_eq!(fault(&"-".repeat(9_999)).code, "expression-limit");
         assert_eq!(fault(&format!("x{}", "^x".repeat(4_000))).code, "expression-limit");
         assert_eq!(fault(&"x".repeat(10_001)).code, "expression-limit");
+        assert_eq!(fault(&format!("1 + {}", "x".repeat(41))).span, 4..45);
         assert!(Expression::parse(&format!("x{}", "+x".repeat(4_999))).is_ok());
         // 10,000 characters of more than one byte are measured as characters.
         assert_eq!(fault(&"\u{e9}".repeat(10_000)).code, "expression-syntax");
