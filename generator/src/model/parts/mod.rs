@@ -19,6 +19,8 @@ mod gauss;
 mod local;
 mod order;
 mod real;
+#[cfg(test)]
+mod references;
 mod size;
 mod space;
 mod sparse;
