@@ -11,7 +11,17 @@
 //!
 //! Not here: files, languages, ranges.
 
+mod effective;
+mod level;
+mod product;
+mod reduce;
+mod share;
+#[cfg(test)]
+mod trial;
+
 use std::rc::Rc;
+
+pub use level::{level, solve};
 
 use crate::model::{C64, Model};
 use crate::pencil::{Scalar, State};

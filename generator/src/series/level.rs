@@ -1,0 +1,277 @@
+//! One level: which states belong together, and the branch that is asked for.
+//!
+//! In: a model and a number. Out: a [`Level`].
+//!
+//! Not here: the series of a model space (`effective`), the branches of a
+//! degenerate set (`reduce`), the part of each other state (`share`).
+
+use std::rc::Rc;
+
+use super::effective::{COEFFICIENTS, Effective, Space, effective};
+use super::product::inner;
+use super::reduce::{Branch, EQUAL, reduce};
+use super::{AnyLevel, Level, share};
+use crate::diagnostic::{Diagnostic, Error, Result};
+use crate::model::{AnyModel, Built, HIGHEST_POWER, Model};
+use crate::outcome::Note;
+use crate::pencil::{Eigenpair, Hermitian, Scalar, State, lowest, reduced_solve};
+
+/// Levels that the record lists.
+pub(super) const LISTED: usize = 12;
+
+/// A gap above the degeneracy threshold, but below this many times it, decides
+/// nothing reliably and is refused.
+const UNSURE: f64 = 1000.0;
+
+/// A coefficient this far below its largest term is noted.
+const CANCELS: f64 = 1e-4;
+
+/// Factor from an estimated error to a stated uncertainty.
+pub(super) const SAFETY: f64 = 4.0;
+
+/// The series of the level with this number, from 1, counted in ascending
+/// energy just above the operating point.
+///
+/// # Errors
+/// `no-such-level` (spec) beyond the number of states; `near-degenerate`
+/// (accuracy) if a neighbour is too close to decide whether it is degenerate.
+pub fn solve(built: &Built, number: usize) -> Result<AnyLevel> {
+    Ok(match &built.model {
+        AnyModel::Real(model) => AnyLevel::Real(Box::new(level(model, number)?)),
+        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(level(model, number)?)),
+    })
+}
+
+/// [`solve`] for a model of known field.
+///
+/// # Errors
+/// As [`solve`].
+pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level<T>> {
+    let found = Set::find(model.as_ref(), number)?;
+    let series = found.series(model.as_ref())?;
+    let branches = branches(&series)?;
+    let idx = number - 1 - found.first;
+    let Some(branch) = branches.get(idx) else {
+        return Err(Error::internal("a degenerate set lost one of its branches"));
+    };
+    let mut energies = [found.energy; COEFFICIENTS];
+    let mut doubt = [0.0; COEFFICIENTS];
+    energies[1..].copy_from_slice(&branch.energies);
+    doubt[1..].copy_from_slice(&branch.doubt);
+    doubt[0] = found.energy_doubt;
+    let mut terms = series.terms;
+    terms[0] = terms[0].max(found.energy.abs());
+
+    let combine = |states: &[State<T>], start: &State<T>| {
+        let mut out = State::zeros(model.order());
+        for (state, &amount) in states.iter().zip(start.iter()) {
+            out.axpy(amount, state, T::one());
+        }
+        out
+    };
+    let set_states: Vec<State<T>> = branches
+        .iter()
+        .map(|branch| {
+            let mut state = combine(&found.states, &branch.start);
+            let phase = model.phase(&state);
+            turn(&mut state, phase);
+            state
+        })
+        .collect();
+    let mut state = combine(&found.states, &branch.start);
+    let mut corrections = [0, 1].map(|which: usize| combine(&series.corrections[which], &branch.start));
+    let phase = model.phase(&state);
+    turn(&mut state, phase);
+    corrections.iter_mut().for_each(|one| turn(one, phase));
+
+    let mut zero: [Option<String>; COEFFICIENTS] = Default::default();
+    if let Some(reason) = model.parity()
+        && maps_to_itself(&branches, idx, &series.terms)
+    {
+        for power in [1, 3, 5] {
+            zero[power] = Some(reason.clone());
+            energies[power] = 0.0;
+            doubt[power] = 0.0;
+        }
+    }
+    let direct = inner(&state, &model.expansion(2).apply(&state)).real();
+    let shared = share::share(model.as_ref(), &found, &state, energies[2], direct)?;
+    doubt[2] = doubt[2].max(shared.disagreement);
+    terms[2] = terms[2].max(shared.largest_term);
+
+    let mut notes = Vec::new();
+    if branches.len() > 1 && equals(&branches, idx, &series.terms).len() > 1 {
+        notes.push(Note {
+            code: "degenerate".into(),
+            text: format!(
+                "level {number} stays degenerate with {} other at every order computed; any of them is meant",
+                equals(&branches, idx, &series.terms).len() - 1
+            ),
+        });
+    }
+    for power in 1..COEFFICIENTS - 1 {
+        if zero[power].is_none() && energies[power].abs() < CANCELS * terms[power] && energies[power] != 0.0 {
+            notes.push(Note {
+                code: "cancellation".into(),
+                text: format!(
+                    "coefficient {power} of level {number} is {:.1e} of the largest term that it is summed from",
+                    energies[power].abs() / terms[power]
+                ),
+            });
+        }
+    }
+    Ok(Level {
+        model: model.clone(),
+        number,
+        energies,
+        uncertainty: doubt.map(|error| SAFETY * error),
+        zero,
+        largest_term: terms,
+        state,
+        corrections,
+        set: (0..found.states.len()).map(|k| found.first + k + 1).collect(),
+        set_states,
+        contributions: shared.contributions,
+        mixing: shared.mixing,
+        levels: shared.levels,
+        notes,
+    })
+}
+
+fn turn<T: Scalar>(state: &mut State<T>, phase: Option<T>) {
+    if let Some(phase) = phase {
+        state.iter_mut().for_each(|x| *x *= phase);
+    }
+}
+
+/// A level with all that are degenerate with it.
+pub(super) struct Set<T: Scalar> {
+    /// Number of levels below the set.
+    pub first: usize,
+    /// Common energy.
+    pub energy: f64,
+    /// Its estimated error.
+    pub energy_doubt: f64,
+    /// Orthonormal states.
+    pub states: Vec<State<T>>,
+    /// The lowest levels, ascending: the set, at least one above it (if there is any), and
+    /// at least [`LISTED`].
+    pub lowest: Vec<Eigenpair<T>>,
+}
+
+impl<T: Scalar> Set<T> {
+    /// Finds the set that holds the level with this number at the operating point.
+    pub(super) fn find(model: &dyn Model<T>, number: usize) -> Result<Self> {
+        let order = model.order();
+        if number == 0 || number > order {
+            return Err(Error::spec(
+                Diagnostic::new("no-such-level", format!("there is no level {number}"))
+                    .found(format!("level {number}"))
+                    .expected(format!("a level from 1 to {order}, the number of states"))
+                    .action("ask for a lower level"),
+            ));
+        }
+        let matrix = model.expansion(0);
+        let same = model.degeneracy_scale();
+        let mut count = LISTED.max(number.saturating_add(2)).min(order);
+        loop {
+            let pairs = lowest(matrix, count)?;
+            if pairs.len() < count {
+                return Err(Error::internal("fewer levels were found than the matrix has"));
+            }
+            let idx = number - 1;
+            let mut from = idx;
+            while from > 0 && pairs[from].energy - pairs[from - 1].energy <= same {
+                from -= 1;
+            }
+            let mut to = idx + 1;
+            while to < count && pairs[to].energy - pairs[to - 1].energy <= same {
+                to += 1;
+            }
+            if to == count && count < order {
+                count = (2 * count).min(order);
+                continue;
+            }
+            let below = (from > 0).then(|| pairs[from].energy - pairs[from - 1].energy);
+            let above = (to < count).then(|| pairs[to].energy - pairs[to - 1].energy);
+            for gap in [below, above].into_iter().flatten() {
+                if gap <= UNSURE * same {
+                    return Err(near_degenerate(number, gap, same));
+                }
+            }
+            let states: Vec<State<T>> = pairs[from..to].iter().map(|pair| pair.state.clone()).collect();
+            let found: Vec<f64> = states.iter().map(|state| model.energy(model.at(), state)).collect();
+            let energy = found.iter().fold(0.0, |sum, e| sum + e) / found.len() as f64;
+            let mut energy_doubt = 2.0 * f64::EPSILON * energy.abs();
+            let gap = below.into_iter().chain(above).fold(f64::INFINITY, f64::min);
+            for (state, e) in states.iter().zip(&found) {
+                let mut rest = matrix.apply(state);
+                rest.axpy(T::from_real(-energy), state, T::one());
+                energy_doubt =
+                    energy_doubt.max((e - energy).abs()).max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
+            }
+            return Ok(Self { first: from, energy, energy_doubt, states, lowest: pairs });
+        }
+    }
+
+    /// The effective series of the whole set.
+    pub(super) fn series(&self, model: &dyn Model<T>) -> Result<Effective<T>> {
+        let matrix = model.expansion(0);
+        let powers: Vec<&Hermitian<T>> = (1..=HIGHEST_POWER).map(|power| model.expansion(power)).collect();
+        let space = Space {
+            unperturbed: matrix,
+            powers: &powers,
+            energies: &vec![self.energy; self.states.len()],
+            reference: self.energy,
+            states: &self.states,
+        };
+        effective(&space, &mut |_, right| reduced_solve(matrix, self.energy, &self.states, right))
+    }
+}
+
+/// The analytic branches E1 to E5 of a set, ascending just above the operating point.
+pub(super) fn branches<T: Scalar>(series: &Effective<T>) -> Result<Vec<Branch<T>>> {
+    reduce(&series.series[1..], &series.terms[1..], &series.doubt[1..])
+}
+
+pub(super) fn near_degenerate(number: usize, gap: f64, same: f64) -> Error {
+    Error::accuracy(
+        Diagnostic::new("near-degenerate", format!("level {number} has a neighbour too close to tell apart from it"))
+            .found(format!("a gap of {gap:.2e} in the unit of the Hamiltonian"))
+            .expected(format!("at most {same:.2e} (degenerate) or at least {:.2e} (apart)", UNSURE * same))
+            .action("name what is `conserved` so that the two fall in different blocks, or ask for `form: paired`"),
+    )
+}
+
+/// True if coefficient `power` (from 1) of two branches is the same within the rule.
+fn same<T: Scalar>(branches: &[Branch<T>], terms: &[f64; COEFFICIENTS], power: usize, a: f64, b: f64) -> bool {
+    let largest =
+        branches.iter().fold(terms[power], |size, branch| size.max(branch.energies[power - 1].abs()));
+    (a - b).abs() <= EQUAL * largest
+}
+
+/// Branches that equal this one in E1 to E4, itself included.
+fn equals<T: Scalar>(branches: &[Branch<T>], idx: usize, terms: &[f64; COEFFICIENTS]) -> Vec<usize> {
+    (0..branches.len())
+        .filter(|&other| {
+            (1..COEFFICIENTS - 1).all(|power| {
+                let (a, b) = (branches[idx].energies[power - 1], branches[other].energies[power - 1]);
+                same(branches, terms, power, a, b)
+            })
+        })
+        .collect()
+}
+
+/// A parity takes every branch E(d) of a set to a branch E(-d) of the same set. If no
+/// other branch can be the image of this one, it is its own image and its odd
+/// coefficients vanish. A set of one always passes.
+fn maps_to_itself<T: Scalar>(branches: &[Branch<T>], idx: usize, terms: &[f64; COEFFICIENTS]) -> bool {
+    let own = equals(branches, idx, terms);
+    (0..branches.len()).filter(|other| !own.contains(other)).all(|other| {
+        (1..COEFFICIENTS - 1).any(|power| {
+            let sign = if power % 2 == 1 { -1.0 } else { 1.0 };
+            let image = sign * branches[idx].energies[power - 1];
+            !same(branches, terms, power, image, branches[other].energies[power - 1])
+        })
+    })
+}
