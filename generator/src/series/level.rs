@@ -207,8 +207,9 @@ impl<T: Scalar> Set<T> {
             for (state, e) in states.iter().zip(&found) {
                 let mut rest = matrix.apply(state);
                 rest.axpy(T::from_real(-energy), state, T::one());
-                energy_doubt =
-                    energy_doubt.max((e - energy).abs()).max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
+                energy_doubt = energy_doubt
+                    .max((e - energy).abs())
+                    .max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
             }
             return Ok(Self { first: from, energy, energy_doubt, states, lowest: pairs });
         }
@@ -236,15 +237,26 @@ pub(super) fn branches<T: Scalar>(series: &Effective<T>) -> Result<Vec<Branch<T>
 
 pub(super) fn near_degenerate(number: usize, gap: f64, same: f64) -> Error {
     Error::accuracy(
-        Diagnostic::new("near-degenerate", format!("level {number} has a neighbour too close to tell apart from it"))
-            .found(format!("a gap of {gap:.2e} in the unit of the Hamiltonian"))
-            .expected(format!("at most {same:.2e} (degenerate) or at least {:.2e} (apart)", UNSURE * same))
-            .action("name what is `conserved` so that the two fall in different blocks, or ask for `form: paired`"),
+        Diagnostic::new(
+            "near-degenerate",
+            format!("level {number} has a neighbour too close to tell apart from it"),
+        )
+        .found(format!("a gap of {gap:.2e} in the unit of the Hamiltonian"))
+        .expected(format!("at most {same:.2e} (degenerate) or at least {:.2e} (apart)", UNSURE * same))
+        .action(
+            "name what is `conserved` so that the two fall in different blocks, or ask for `form: paired`",
+        ),
     )
 }
 
 /// True if coefficient `power` (from 1) of two branches is the same within the rule.
-fn same<T: Scalar>(branches: &[Branch<T>], terms: &[f64; COEFFICIENTS], power: usize, a: f64, b: f64) -> bool {
+fn same<T: Scalar>(
+    branches: &[Branch<T>],
+    terms: &[f64; COEFFICIENTS],
+    power: usize,
+    a: f64,
+    b: f64,
+) -> bool {
     let largest =
         branches.iter().fold(terms[power], |size, branch| size.max(branch.energies[power - 1].abs()));
     (a - b).abs() <= EQUAL * largest

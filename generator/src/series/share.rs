@@ -83,23 +83,28 @@ pub(super) fn share<T: Scalar>(
             pairs = Some(lowest(model.expansion(0), count)?);
             continue;
         }
-        let disagreement = if second > sum {
-            second - sum
-        } else {
-            (sum + tail - second).max(0.0)
-        };
+        let disagreement = if second > sum { second - sum } else { (sum + tail - second).max(0.0) };
         let largest_term = terms.iter().fold(direct.abs(), |size, term| size.max(term.2.abs()));
-        let contributions = if second == 0.0 { Vec::new() } else { listed(&terms, direct, second, set.energy) };
+        let contributions =
+            if second == 0.0 { Vec::new() } else { listed(&terms, direct, second, set.energy) };
         let mixing = mixing(model, set, &terms, states, &contributions);
-        let levels = set.lowest.iter().take(LISTED).enumerate().map(|(idx, pair)| {
-            if inside.contains(&idx) { set.energy } else { pair.energy }
-        });
+        let levels = set
+            .lowest
+            .iter()
+            .take(LISTED)
+            .enumerate()
+            .map(|(idx, pair)| if inside.contains(&idx) { set.energy } else { pair.energy });
         return Ok(Shared { contributions, mixing, levels: levels.collect(), disagreement, largest_term });
     }
 }
 
 /// Terms by falling size, until the cut.
-fn listed<T: Scalar>(terms: &[(usize, f64, f64, T)], direct: f64, second: f64, own: f64) -> Vec<Contribution> {
+fn listed<T: Scalar>(
+    terms: &[(usize, f64, f64, T)],
+    direct: f64,
+    second: f64,
+    own: f64,
+) -> Vec<Contribution> {
     let mut all: Vec<Contribution> = terms
         .iter()
         .map(|&(number, energy, term, _)| Contribution { level: Some(number), energy, share: term / second })

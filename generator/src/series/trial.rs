@@ -143,7 +143,8 @@ fn certain<T: Scalar>(level: &Level<T>, expected: &[f64]) {
 /// `(-1 - sqrt(1 + 4 x^2)) / 2` and its upper partner, expanded by hand.
 #[test]
 fn two_levels_follow_their_closed_form() {
-    let h = || vec![real(2, |i, j| if i == 1 && j == 1 { -1.0 } else { 0.0 }), real(2, |i, j| f64::from(i != j))];
+    let h =
+        || vec![real(2, |i, j| if i == 1 && j == 1 { -1.0 } else { 0.0 }), real(2, |i, j| f64::from(i != j))];
     certain(&of(h(), 1).unwrap(), &[-1.0, 0.0, -1.0, 0.0, 1.0, 0.0]);
     certain(&of(h(), 2).unwrap(), &[0.0, 0.0, 1.0, 0.0, -1.0, 0.0]);
 }
