@@ -7,7 +7,28 @@
 //!
 //! Not here: solving; YAML types outside this folder.
 
+mod constants;
+mod document;
+mod formulas;
+mod layers;
+mod materials;
+mod matrix;
+mod matrix_file;
 mod operators;
+mod outputs;
+mod parts;
+mod raw;
+mod scope;
+mod shape;
+mod tree;
+mod units_of;
+
+#[cfg(test)]
+mod tests;
+
+pub use document::{Document, Files, Loaded, Loader, NoFiles, sha256};
+pub use materials::SHIPPED as SHIPPED_MATERIALS;
+pub use matrix_file::{Grid, read as read_matrix};
 
 use nalgebra::DMatrix;
 
@@ -377,6 +398,17 @@ pub struct Output {
     pub number: Option<Number>,
     /// Replaces the number's word in the stem.
     pub suffix: Option<String>,
+    /// Widths and steps, for [`Number::Fixed`] alone.
+    pub counts: Option<OutputCounts>,
     /// Place in the spec.
     pub place: Place,
+}
+
+/// Widths and steps of a fixed output.
+#[derive(Clone, Debug)]
+pub struct OutputCounts {
+    /// Of the control, step in its unit.
+    pub control: Count,
+    /// Of each formula, step in its unit, in the order of the spec.
+    pub values: Vec<Count>,
 }
