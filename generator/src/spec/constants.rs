@@ -14,7 +14,8 @@ pub fn read(scope: &mut Scope<'_>, constants: &Named<Scalar>, overrides: &[(Stri
     let mut users: BTreeMap<&str, Vec<&str>> = BTreeMap::new();
     let mut parsed: BTreeMap<&str, Expression> = BTreeMap::new();
     let mut ready = VecDeque::new();
-    let all: BTreeMap<&str, &Scalar> = constants.0.iter().map(|(name, scalar)| (name.as_str(), scalar)).collect();
+    let all: BTreeMap<&str, &Scalar> =
+        constants.0.iter().map(|(name, scalar)| (name.as_str(), scalar)).collect();
     for (name, scalar) in &constants.0 {
         let path = format!("constants.{name}");
         if !scope.symbol(&path, name, scope.key_place(&path)) {
@@ -56,7 +57,11 @@ pub fn read(scope: &mut Scope<'_>, constants: &Named<Scalar>, overrides: &[(Stri
                     let unit = constant.written.1.clone();
                     constant = Constant { value: unit.value(*number), written: (*number, unit) };
                 }
-                scope.input(format!("constants.{name}"), constant.written.0, constant.written.1.symbol.clone());
+                scope.input(
+                    format!("constants.{name}"),
+                    constant.written.0,
+                    constant.written.1.symbol.clone(),
+                );
                 scope.constants.insert(name.to_owned(), constant);
             }
             None => failed.push(name),
@@ -87,8 +92,11 @@ pub fn read(scope: &mut Scope<'_>, constants: &Named<Scalar>, overrides: &[(Stri
     for (name, number) in overrides {
         if !scope.constants.contains_key(name) && scope.problems() == 0 {
             scope.problem(
-                crate::diagnostic::Diagnostic::new("unknown-constant", format!("there is no constant `{name}`"))
-                    .found(number.to_string()),
+                crate::diagnostic::Diagnostic::new(
+                    "unknown-constant",
+                    format!("there is no constant `{name}`"),
+                )
+                .found(number.to_string()),
             );
         }
     }
@@ -133,7 +141,12 @@ fn written(value: Value) -> (f64, Unit) {
         // Fractional powers have no unit in the language: the coherent number then.
         None => (
             value.number,
-            Unit { symbol: value.dimension.describe(), dimension: value.dimension, mantissa: 1.0, exponent: 0 },
+            Unit {
+                symbol: value.dimension.describe(),
+                dimension: value.dimension,
+                mantissa: 1.0,
+                exponent: 0,
+            },
         ),
     }
 }

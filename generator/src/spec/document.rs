@@ -333,8 +333,7 @@ fn control(scope: &mut Scope<'_>, raw: &raw::Control) -> Option<Control> {
     let to = scope.number("control.within[1]", to, &unit, Bare::InUnit);
     let (from, to) = (from?, to?);
     if from >= to || at < from || at > to {
-        let message =
-            if from >= to { "`within` is empty" } else { "the operating point is not in `within`" };
+        let message = if from >= to { "`within` is empty" } else { "the operating point is not in `within`" };
         scope.problem(
             scope
                 .wrong("within", "control.within", message)

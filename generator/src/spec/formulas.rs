@@ -257,7 +257,11 @@ fn overlap(
         if !matches!(systems.get(level.system).map(|system| &system.kind), Some(Kind::Layers(_))) {
             scope.problem(
                 scope
-                    .wrong("overlap", &format!("{key}[{index}]"), "only levels of layer stacks have envelopes")
+                    .wrong(
+                        "overlap",
+                        &format!("{key}[{index}]"),
+                        "only levels of layer stacks have envelopes",
+                    )
                     .expected("a system of `kind: layers`"),
             );
             return None;
@@ -387,7 +391,9 @@ fn level(scope: &Scope<'_>, systems: &[System], path: &str, raw: &raw::Term) -> 
             return None;
         }
         let number = scope.number(&path, value, &Unit::one(), Bare::InUnit)?;
-        if matches!(system.kind, Kind::Radial(_)) && (libm::floor(number) != number || (name == "l" && number < 0.0)) {
+        if matches!(system.kind, Kind::Radial(_))
+            && (libm::floor(number) != number || (name == "l" && number < 0.0))
+        {
             scope.problem(
                 scope
                     .wrong("not-whole", &path, "this value cannot occur")
@@ -431,8 +437,7 @@ fn one_origin(scope: &Scope<'_>, systems: &[System], path: &str, terms: &[Term])
         match first {
             None => first = Some((length, &system.name)),
             Some((other, name)) if (length - other).abs() > 1e-9 * length.max(other) => {
-                let written =
-                    |name: &str| scope.text.root.find(&format!("systems.{name}.origin")).is_some();
+                let written = |name: &str| scope.text.root.find(&format!("systems.{name}.origin")).is_some();
                 if written(name) && written(&system.name) {
                     continue;
                 }

@@ -217,8 +217,7 @@ impl Stack<'_> {
         };
         let (edge, mass, monolayer, graded) = profiles?;
         let name = raw.name.as_ref().map(|name| super::tree::short(&name.0));
-        let layer =
-            Layer { name, thickness: thickness?, edge, mass, monolayer, place: scope.place(path) };
+        let layer = Layer { name, thickness: thickness?, edge, mass, monolayer, place: scope.place(path) };
         Some(Draft { layer, path: path.to_owned(), graded })
     }
 
@@ -254,11 +253,9 @@ impl Stack<'_> {
         let tree = |path: &str, scalar: &Scalar, allowed| {
             let tree = scope.tree(path, scalar, &unit, bare, allowed)?;
             if !edge && tree.as_number().is_some_and(|mass| mass <= 0.0) {
-                scope.problem(
-                    scope.wrong("not-positive", path, "a mass must be positive").action(
-                        "a hole has a positive mass, and an edge that rises where the valence edge falls",
-                    ),
-                );
+                scope.problem(scope.wrong("not-positive", path, "a mass must be positive").action(
+                    "a hole has a positive mass, and an edge that rises where the valence edge falls",
+                ));
                 return None;
             }
             Some(tree)
@@ -308,10 +305,9 @@ fn finite(scope: &Scope<'_>, path: &str, tree: &Tree, (from, to): (f64, f64), ab
         let z = from + (to - from) * f64::from(step) / 32.0;
         let value = tree.value(control, z);
         if !value.is_finite() || value <= above {
-            let what = if above == 0.0 { "a mass must be positive and finite" } else { "the edge is not finite" };
-            scope.problem(
-                scope.wrong("not-finite", path, what).found(format!("{value} at z = {z:.6} nm")),
-            );
+            let what =
+                if above == 0.0 { "a mass must be positive and finite" } else { "the edge is not finite" };
+            scope.problem(scope.wrong("not-finite", path, what).found(format!("{value} at z = {z:.6} nm")));
             return false;
         }
     }

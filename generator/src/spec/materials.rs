@@ -17,8 +17,7 @@ use crate::expr::Tree;
 use crate::units::{Unit, nearest};
 
 /// The materials that are shipped with the program: name and text.
-pub const SHIPPED: [(&str, &str); 1] =
-    [("iii-v", include_str!("../../../specs/materials/iii-v.yaml"))];
+pub const SHIPPED: [(&str, &str); 1] = [("iii-v", include_str!("../../../specs/materials/iii-v.yaml"))];
 
 /// A materials file as read.
 #[derive(Clone, Debug)]
@@ -184,11 +183,16 @@ impl Materials {
         let is_compound = self.file.raw.compounds.0.iter().any(|(other, _)| other == name);
         let wanted_alloy = matches!(raw, OneOr::More(_));
         if (wanted_alloy && !is_alloy) || (!wanted_alloy && !is_compound) {
-            let compounds: Vec<&str> = self.file.raw.compounds.0.iter().map(|(name, _)| name.as_str()).collect();
+            let compounds: Vec<&str> =
+                self.file.raw.compounds.0.iter().map(|(name, _)| name.as_str()).collect();
             let alloys: Vec<&str> = self.file.raw.alloys.0.iter().map(|(name, _)| name.as_str()).collect();
             let known = if wanted_alloy { alloys } else { compounds };
             let fault = scope
-                .wrong("unknown-material", &name_path, format!("`{}` is not in the materials file", short(name)))
+                .wrong(
+                    "unknown-material",
+                    &name_path,
+                    format!("`{}` is not in the materials file", short(name)),
+                )
                 .expected(format!("one of {}", known.join(", ")));
             scope.problem(if is_alloy && !wanted_alloy {
                 fault.action(format!("it is an alloy: write `{{alloy: {name}, x: 0.3}}`"))
@@ -224,9 +228,7 @@ impl Materials {
                 return Some(x);
             }
             scope.problem(
-                scope
-                    .wrong("composition", path, "a composition lies between 0 and 1")
-                    .found(x.to_string()),
+                scope.wrong("composition", path, "a composition lies between 0 and 1").found(x.to_string()),
             );
             None
         };
@@ -255,11 +257,7 @@ impl Materials {
     }
 
     /// A parameter as a polynomial in the composition; of degree 0 for a compound.
-    fn polynomial(
-        &self,
-        name: &str,
-        parameter: Parameter,
-    ) -> std::result::Result<Vec<f64>, Box<Diagnostic>> {
+    fn polynomial(&self, name: &str, parameter: Parameter) -> std::result::Result<Vec<f64>, Box<Diagnostic>> {
         if let Some((_, compound)) = self.file.raw.compounds.0.iter().find(|(other, _)| other == name) {
             return self.compound(name, compound, parameter).map(|value| vec![value]);
         }
@@ -272,7 +270,9 @@ impl Materials {
         };
         let end = |of: &Scalar| match self.file.raw.compounds.0.iter().find(|(other, _)| *other == of.0) {
             Some((name, compound)) => self.compound(name, compound, parameter),
-            None => Err(missing(format!("`{name}` is of `{}`, which is no compound of the file", short(&of.0)))),
+            None => {
+                Err(missing(format!("`{name}` is of `{}`, which is no compound of the file", short(&of.0))))
+            }
         };
         let (a, b) = (end(first)?, end(second)?);
         let mut out = vec![b, a - b];
@@ -360,9 +360,12 @@ impl Materials {
                 let (problems, _) = scope.finish();
                 let text = problems.first().map_or(String::new(), |one| format!(": {}", one.message));
                 Err(Box::new(
-                    Diagnostic::new("materials", format!("`{path}` of {} is wrong{text}", self.file.text.file))
-                        .found(format!("`{}`", short(&scalar.0)))
-                        .expected(format!("a number in `{}`", unit.symbol)),
+                    Diagnostic::new(
+                        "materials",
+                        format!("`{path}` of {} is wrong{text}", self.file.text.file),
+                    )
+                    .found(format!("`{}`", short(&scalar.0)))
+                    .expected(format!("a number in `{}`", unit.symbol)),
                 ))
             }
         }

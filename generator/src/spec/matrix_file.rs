@@ -143,9 +143,13 @@ impl Reader<'_> {
             (true, [rows, columns, entries]) => (*rows, *columns, *entries),
             (false, [rows, columns]) => (*rows, *columns, usize::MAX),
             _ => {
-                return Err(Error::spec(self.fault(size, "the line of sizes is wrong").expected(
-                    if coordinate { "rows, columns, entries" } else { "rows, columns" },
-                )));
+                return Err(Error::spec(
+                    self.fault(size, "the line of sizes is wrong").expected(if coordinate {
+                        "rows, columns, entries"
+                    } else {
+                        "rows, columns"
+                    }),
+                ));
             }
         };
         if rows != columns || rows == 0 || rows > most {
@@ -192,15 +196,16 @@ impl Reader<'_> {
                 return Err(wrong("the line holds too much"));
             }
             let value = C64::new(re, im);
-            let mut put = |i: usize, j: usize, value: C64| {
-                match (grid.get_mut(i).and_then(|row| row.get_mut(j)), seen.get_mut(i).and_then(|row| row.get_mut(j))) {
-                    (Some(slot), Some(seen)) if !*seen => {
-                        *slot = value;
-                        *seen = true;
-                        true
-                    }
-                    _ => false,
+            let mut put = |i: usize, j: usize, value: C64| match (
+                grid.get_mut(i).and_then(|row| row.get_mut(j)),
+                seen.get_mut(i).and_then(|row| row.get_mut(j)),
+            ) {
+                (Some(slot), Some(seen)) if !*seen => {
+                    *slot = value;
+                    *seen = true;
+                    true
                 }
+                _ => false,
             };
             if !put(i, j, value) {
                 return Err(wrong("this element stands twice, or beyond the matrix"));
@@ -234,7 +239,9 @@ impl Reader<'_> {
 
 fn real(text: &str) -> Option<f64> {
     let text = text.trim();
-    read_number(text).filter(|(value, length)| *length == text.len() && value.is_finite()).map(|(value, _)| value)
+    read_number(text)
+        .filter(|(value, length)| *length == text.len() && value.is_finite())
+        .map(|(value, _)| value)
 }
 
 /// `a`, `a+bi`, `bi` or `i`, with `j` for `i` too.
@@ -253,7 +260,9 @@ fn complex(text: &str) -> Option<C64> {
         .char_indices()
         .rev()
         .find(|(at, c)| {
-            matches!(c, '+' | '-') && *at > 0 && !body.get(..*at).is_some_and(|head| head.ends_with(['e', 'E']))
+            matches!(c, '+' | '-')
+                && *at > 0
+                && !body.get(..*at).is_some_and(|head| head.ends_with(['e', 'E']))
         })
         .map(|(at, _)| at);
     match split.and_then(|at| Some((body.get(..at)?, body.get(at..)?))) {
@@ -272,8 +281,13 @@ mod tests {
 
     #[test]
     fn each_symmetry_fills_the_other_triangle() {
-        let grid = market("%%MatrixMarket matrix coordinate complex hermitian\n% c\n2 2 2\n1 1 3 0\n2 1 1 2\n").unwrap();
-        assert_eq!(grid.rows, [[C64::new(3.0, 0.0), C64::new(1.0, -2.0)], [C64::new(1.0, 2.0), C64::new(0.0, 0.0)]]);
+        let grid =
+            market("%%MatrixMarket matrix coordinate complex hermitian\n% c\n2 2 2\n1 1 3 0\n2 1 1 2\n")
+                .unwrap();
+        assert_eq!(
+            grid.rows,
+            [[C64::new(3.0, 0.0), C64::new(1.0, -2.0)], [C64::new(1.0, 2.0), C64::new(0.0, 0.0)]]
+        );
         let grid = market("%%MatrixMarket matrix array real symmetric\n2 2\n1\n2\n3\n").unwrap();
         assert_eq!(grid.rows[0][1].re, 2.0);
         assert_eq!(grid.rows[1][1].re, 3.0);

@@ -109,12 +109,7 @@ pub fn parts(scope: &Scope<'_>, path: &str, raw: &raw::System) -> Option<Parts> 
     })
 }
 
-fn part(
-    scope: &Scope<'_>,
-    path: &str,
-    name: &str,
-    raw: &OneOr<raw::Named<raw::Size>>,
-) -> Option<Part> {
+fn part(scope: &Scope<'_>, path: &str, name: &str, raw: &OneOr<raw::Named<raw::Size>>) -> Option<Part> {
     let (words, size) = match raw {
         OneOr::One(words) => (words.0.clone(), None),
         OneOr::More(sized) => match sized.0.as_slice() {
@@ -124,7 +119,9 @@ fn part(
             }
             _ => {
                 scope.problem(
-                    scope.wrong("wrong-form", path, "a part is of one kind").expected("`{rotor: {size: 12}}`"),
+                    scope
+                        .wrong("wrong-form", path, "a part is of one kind")
+                        .expected("`{rotor: {size: 12}}`"),
                 );
                 return None;
             }
@@ -167,9 +164,14 @@ fn kind(scope: &Scope<'_>, path: &str, words: &str) -> Option<PartKind> {
             let twice = match rest.split_once('/') {
                 Some((top, "2")) => top.trim().parse::<usize>().ok(),
                 Some(_) => None,
-                None => rest.parse::<f64>().ok().map(|j| 2.0 * j).filter(|twice| {
-                    *twice >= 1.0 && *twice < MOST_STATES as f64 && libm::floor(*twice) == *twice
-                }).map(|twice| twice as usize),
+                None => rest
+                    .parse::<f64>()
+                    .ok()
+                    .map(|j| 2.0 * j)
+                    .filter(|twice| {
+                        *twice >= 1.0 && *twice < MOST_STATES as f64 && libm::floor(*twice) == *twice
+                    })
+                    .map(|twice| twice as usize),
             };
             match twice.filter(|twice| (1..MOST_STATES).contains(twice)) {
                 Some(twice) => {

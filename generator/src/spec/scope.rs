@@ -170,9 +170,7 @@ impl<'a> Scope<'a> {
             Diagnostic::new("bad-name", format!("`{}` cannot be a name", short(name)))
                 .at(Some(place))
                 .found(if length { "another form".to_owned() } else { format!("{} characters", name.len()) })
-                .expected(format!(
-                    "a letter, then {letters}, digits and `_`, at most {LONGEST_NAME} in all"
-                ))
+                .expected(format!("a letter, then {letters}, digits and `_`, at most {LONGEST_NAME} in all"))
                 .action(format!("rename it (`{}`)", short(path))),
         );
         false
@@ -216,9 +214,8 @@ impl<'a> Scope<'a> {
         let number = crate::units::read_number(scalar.0.trim())
             .filter(|(value, length)| *length == scalar.0.trim().len() && value.is_finite())
             .map(|(value, _)| value);
-        let whole = number.filter(|value| {
-            libm::floor(*value) == *value && *value >= from as f64 && *value <= to as f64
-        });
+        let whole = number
+            .filter(|value| libm::floor(*value) == *value && *value >= from as f64 && *value <= to as f64);
         if let Some(value) = whole {
             self.input(path, value, "1");
             return Some(value as usize);
@@ -265,7 +262,12 @@ impl<'a> Scope<'a> {
             self.problem(
                 self.wrong("unit-missing", path, "the unit is missing")
                     .found(format!("`{}`", short(text)))
-                    .expected(format!("{}, such as `{} {}`", unit.dimension.describe(), short(text), unit.symbol)),
+                    .expected(format!(
+                        "{}, such as `{} {}`",
+                        unit.dimension.describe(),
+                        short(text),
+                        unit.symbol
+                    )),
             );
             return None;
         }
@@ -322,7 +324,13 @@ impl<'a> Scope<'a> {
         Some(number)
     }
 
-    fn resolve(&self, path: &str, text: &str, expression: &Expression, allowed: Allowed<'_>) -> Option<Resolved> {
+    fn resolve(
+        &self,
+        path: &str,
+        text: &str,
+        expression: &Expression,
+        allowed: Allowed<'_>,
+    ) -> Option<Resolved> {
         let names = Names { scope: self, allowed };
         self.caught(path, text, expression.resolve(&names))
     }
@@ -399,7 +407,10 @@ impl<'a> Scope<'a> {
         let Some(kink) = found.iter().find(|kink| kink.of_control) else { return true };
         self.problem(
             self.wrong("kink", path, format!("`{}` has its kink inside `within`", kink.function.word()))
-                .found(format!("a kink near {} = {:.6} {}", control.symbol, kink.control, control.unit.symbol))
+                .found(format!(
+                    "a kink near {} = {:.6} {}",
+                    control.symbol, kink.control, control.unit.symbol
+                ))
                 .action("narrow `within` to one side of it, or write a smooth expression"),
         );
         false
@@ -444,7 +455,9 @@ impl Environment for Names<'_> {
         if name == "z" {
             return Some(match Unit::parse("nm") {
                 Ok(nanometre) if self.allowed.position => Symbol::Position(nanometre.value(1.0)),
-                _ => Symbol::Forbidden("`z` may stand in edges and masses of layers and shells only".to_owned()),
+                _ => Symbol::Forbidden(
+                    "`z` may stand in edges and masses of layers and shells only".to_owned(),
+                ),
             });
         }
         None

@@ -356,10 +356,12 @@ fn fields_of(text: &Text, node: &Node, fields: &'static [Field], out: &mut Vec<D
         match fields.iter().find(|field| field.name == key.text) {
             Some(field) => visit(text, &key.value, &field.shape, out),
             None => {
-                let fault =
-                    Diagnostic::new("unknown-key", format!("`{}` is not a key of this place", short(&key.text)))
-                        .at(Some(text.place(key.span.clone())))
-                        .expected(format!("one of {}", names.join(", ")));
+                let fault = Diagnostic::new(
+                    "unknown-key",
+                    format!("`{}` is not a key of this place", short(&key.text)),
+                )
+                .at(Some(text.place(key.span.clone())))
+                .expected(format!("one of {}", names.join(", ")));
                 out.push(match nearest(&key.text, names.iter().copied()) {
                     Some(near) => fault.action(format!("write `{near}`, if that is meant")),
                     None => fault.action("remove it"),

@@ -173,11 +173,8 @@ struct Bytes {
 
 impl Bytes {
     fn new(text: &str, offset: usize) -> Self {
-        let table = if text.is_ascii() {
-            Vec::new()
-        } else {
-            text.char_indices().map(|(byte, _)| byte).collect()
-        };
+        let table =
+            if text.is_ascii() { Vec::new() } else { text.char_indices().map(|(byte, _)| byte).collect() };
         Self { table, length: text.len(), offset }
     }
 
@@ -258,7 +255,10 @@ impl Builder<'_> {
                     self.plain(anchor, tag.is_some(), &span)?;
                     // A block scalar's stretch may take in the lines below it.
                     let written = text
-                        .get(span.start.saturating_sub(self.count.offset)..span.end.saturating_sub(self.count.offset))
+                        .get(
+                            span.start.saturating_sub(self.count.offset)
+                                ..span.end.saturating_sub(self.count.offset),
+                        )
                         .unwrap_or("");
                     let trimmed = written.trim_end().len().min(written.len());
                     let plain = style == ScalarStyle::Plain;
@@ -280,7 +280,9 @@ impl Builder<'_> {
                 Event::SequenceEnd | Event::MappingEnd => self.open.pop().map(|open| {
                     let end = match (open.keys.as_ref(), open.items.last()) {
                         // Block collections end where their last value ends.
-                        (Some(keys), _) if span.end <= span.start => keys.last().map(|key| key.value.span.end),
+                        (Some(keys), _) if span.end <= span.start => {
+                            keys.last().map(|key| key.value.span.end)
+                        }
                         (None, Some(item)) if span.end <= span.start => Some(item.span.end),
                         _ => None,
                     };
@@ -324,13 +326,7 @@ impl Builder<'_> {
                     .expected(format!("at most {DEEPEST} levels")),
             ));
         }
-        self.open.push(Open {
-            start: span.start,
-            keys,
-            items: Vec::new(),
-            key: None,
-            seen: BTreeMap::new(),
-        });
+        self.open.push(Open { start: span.start, keys, items: Vec::new(), key: None, seen: BTreeMap::new() });
         Ok(())
     }
 
@@ -355,7 +351,11 @@ impl Builder<'_> {
                 if open.seen.contains_key(&text) {
                     if self.found.len() < 20 {
                         let fault = self
-                            .fault("duplicate-key", node.span.clone(), format!("`{}` stands here twice", short(&text)))
+                            .fault(
+                                "duplicate-key",
+                                node.span.clone(),
+                                format!("`{}` stands here twice", short(&text)),
+                            )
                             .action("keep one of the two");
                         self.found.push(fault);
                     }
