@@ -152,6 +152,8 @@ pub(super) struct Set<T: Scalar> {
     pub energy: f64,
     /// Its estimated error.
     pub energy_doubt: f64,
+    /// Distance to the nearest level outside.
+    pub gap: f64,
     /// Orthonormal states.
     pub states: Vec<State<T>>,
     /// The lowest levels, ascending: the set, at least one above it (if there is any), and
@@ -162,6 +164,16 @@ pub(super) struct Set<T: Scalar> {
 impl<T: Scalar> Set<T> {
     /// Finds the set that holds the level with this number at the operating point.
     pub(super) fn find(model: &dyn Model<T>, number: usize) -> Result<Self> {
+        let found = Self::find_any(model, number)?;
+        if found.gap <= UNSURE * model.degeneracy_scale() {
+            return Err(near_degenerate(number, found.gap, model.degeneracy_scale()));
+        }
+        Ok(found)
+    }
+
+    /// [`Set::find`] that accepts a doubtful gap to the next set: a pair is smooth
+    /// there.
+    pub(super) fn find_any(model: &dyn Model<T>, number: usize) -> Result<Self> {
         let order = model.order();
         if number == 0 || number > order {
             return Err(Error::spec(
@@ -194,11 +206,6 @@ impl<T: Scalar> Set<T> {
             }
             let below = (from > 0).then(|| pairs[from].energy - pairs[from - 1].energy);
             let above = (to < count).then(|| pairs[to].energy - pairs[to - 1].energy);
-            for gap in [below, above].into_iter().flatten() {
-                if gap <= UNSURE * same {
-                    return Err(near_degenerate(number, gap, same));
-                }
-            }
             let states: Vec<State<T>> = pairs[from..to].iter().map(|pair| pair.state.clone()).collect();
             let found: Vec<f64> = states.iter().map(|state| model.energy(model.at(), state)).collect();
             let energy = found.iter().fold(0.0, |sum, e| sum + e) / found.len() as f64;
@@ -211,7 +218,7 @@ impl<T: Scalar> Set<T> {
                     .max((e - energy).abs())
                     .max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
             }
-            return Ok(Self { first: from, energy, energy_doubt, states, lowest: pairs });
+            return Ok(Self { first: from, energy, energy_doubt, gap, states, lowest: pairs });
         }
     }
 
@@ -235,7 +242,7 @@ pub(super) fn branches<T: Scalar>(series: &Effective<T>) -> Result<Vec<Branch<T>
     reduce(&series.series[1..], &series.terms[1..], &series.doubt[1..])
 }
 
-pub(super) fn near_degenerate(number: usize, gap: f64, same: f64) -> Error {
+fn near_degenerate(number: usize, gap: f64, same: f64) -> Error {
     Error::accuracy(
         Diagnostic::new(
             "near-degenerate",

@@ -13,6 +13,7 @@
 
 mod effective;
 mod level;
+mod pair;
 mod product;
 mod reduce;
 mod share;
@@ -22,6 +23,7 @@ mod trial;
 use std::rc::Rc;
 
 pub use level::{level, solve};
+pub use pair::{pair, pair_of};
 
 use crate::model::{C64, Model};
 use crate::pencil::{Scalar, State};
