@@ -44,7 +44,12 @@ pub struct Best {
 ///
 /// # Errors
 /// If the function is not finite on the interval.
-pub fn best(exact: &dyn Fn(f64) -> f64, interval: (f64, f64), order: usize, absent: &[usize]) -> Result<Best> {
+pub fn best(
+    exact: &dyn Fn(f64) -> f64,
+    interval: (f64, f64),
+    order: usize,
+    absent: &[usize],
+) -> Result<Best> {
     let powers: Vec<usize> = (0..=order).filter(|power| !absent.contains(power)).collect();
     let mut coefficients = vec![0.0; order + 1];
     let size = interval.0.abs().max(interval.1.abs());
@@ -68,8 +73,11 @@ pub fn best(exact: &dyn Fn(f64) -> f64, interval: (f64, f64), order: usize, abse
     let values: Vec<f64> = points.iter().map(|&d| exact(d)).collect();
     if values.iter().any(|value| !value.is_finite()) {
         return Err(Error::accuracy(
-            Diagnostic::new("undefined", "the exact level is not defined on the whole interval of a minimax form")
-                .action("narrow `within`"),
+            Diagnostic::new(
+                "undefined",
+                "the exact level is not defined on the whole interval of a minimax form",
+            )
+            .action("narrow `within`"),
         ));
     }
     let n_reference = powers.len() + 1;
@@ -166,7 +174,8 @@ impl Problem<'_> {
 
     /// Error at `d` times the sign of the common factor.
     fn error(&self, scaled: &[f64], d: f64, value: f64) -> f64 {
-        let fitted = self.powers.iter().zip(scaled).fold(0.0, |sum, (&power, c)| sum + c * self.base(d, power));
+        let fitted =
+            self.powers.iter().zip(scaled).fold(0.0, |sum, (&power, c)| sum + c * self.base(d, power));
         self.sign(d) * (value - fitted)
     }
 

@@ -74,10 +74,16 @@ impl Form {
     #[must_use]
     pub fn written(&self, uncertainty: &[f64], gap_uncertainty: &[f64]) -> Self {
         let cut = |values: &[f64], doubts: &[f64]| {
-            values.iter().enumerate().map(|(k, &c)| written(c, doubts.get(k).copied().unwrap_or(0.0))).collect()
+            values
+                .iter()
+                .enumerate()
+                .map(|(k, &c)| written(c, doubts.get(k).copied().unwrap_or(0.0)))
+                .collect()
         };
         match self {
-            Self::Polynomial { coefficients } => Self::Polynomial { coefficients: cut(coefficients, uncertainty) },
+            Self::Polynomial { coefficients } => {
+                Self::Polynomial { coefficients: cut(coefficients, uncertainty) }
+            }
             Self::Paired { mean, half_gap_squared, sign, partner } => Self::Paired {
                 mean: cut(mean, uncertainty),
                 half_gap_squared: cut(half_gap_squared, gap_uncertainty),

@@ -42,7 +42,11 @@ pub fn pair(built: &Built, number: usize, partner: Option<usize>) -> Result<Pair
 ///
 /// # Errors
 /// As [`pair`].
-pub fn pair_of<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, partner: Option<usize>) -> Result<PairSeries> {
+pub fn pair_of<T: Scalar>(
+    model: &Rc<dyn Model<T>>,
+    number: usize,
+    partner: Option<usize>,
+) -> Result<PairSeries> {
     if partner == Some(number) {
         return Err(Error::spec(
             Diagnostic::new("no-partner", format!("level {number} cannot be its own partner"))
@@ -69,7 +73,11 @@ pub fn pair_of<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, partner: Opti
             };
             let other = match (idx.checked_sub(1), (idx + 1 < size).then_some(idx + 1)) {
                 (Some(below), Some(above)) => {
-                    if apart(below) < apart(above) { below } else { above }
+                    if apart(below) < apart(above) {
+                        below
+                    } else {
+                        above
+                    }
                 }
                 (Some(below), None) => below,
                 (None, above) => above.unwrap_or(idx),
@@ -206,8 +214,17 @@ mod tests {
     fn certain(found: &[f64; POWERS], doubt: &[f64; POWERS], expected: &[f64], what: &str) {
         for (power, &value) in expected.iter().enumerate() {
             let error = (found[power] - value).abs();
-            assert!(error <= doubt[power], "{what}[{power}] = {:e}, not {value:e}; stated {:e}", found[power], doubt[power]);
-            assert!(doubt[power] < 1e-9 * value.abs().max(1.0), "{what}[{power}] is known to {:e} only", doubt[power]);
+            assert!(
+                error <= doubt[power],
+                "{what}[{power}] = {:e}, not {value:e}; stated {:e}",
+                found[power],
+                doubt[power]
+            );
+            assert!(
+                doubt[power] < 1e-9 * value.abs().max(1.0),
+                "{what}[{power}] is known to {:e} only",
+                doubt[power]
+            );
         }
     }
 
@@ -216,7 +233,15 @@ mod tests {
     fn two_lone_levels_are_exact() {
         let h = vec![
             real(2, |i, j| if i == j { i as f64 } else { 0.0 }),
-            real(2, |i, j| if i != j { 0.3 } else if i == 0 { 0.1 } else { 0.7 }),
+            real(2, |i, j| {
+                if i != j {
+                    0.3
+                } else if i == 0 {
+                    0.1
+                } else {
+                    0.7
+                }
+            }),
         ];
         let found = pair_of(&Trial::new(h).shared(), 1, None).unwrap();
         assert_eq!((found.numbers, found.sign), ([1, 2], -1.0));
