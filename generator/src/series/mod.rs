@@ -13,6 +13,7 @@
 
 mod effective;
 mod level;
+mod overlap;
 mod pair;
 mod product;
 mod reduce;
@@ -23,7 +24,10 @@ mod trial;
 use std::rc::Rc;
 
 pub use level::{level, solve};
+pub use overlap::{OverlapSeries, overlap, points, squared_overlap, wave};
 pub use pair::{pair, pair_of};
+
+use level::SAFETY;
 
 use crate::model::{C64, Model};
 use crate::pencil::{Scalar, State};
