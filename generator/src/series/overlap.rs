@@ -266,19 +266,25 @@ mod tests {
     fn opposite_charges_in_one_well_lose_overlap() {
         let mut holes = well(60);
         holes[1] *= -0.5;
-        let electron = AnyLevel::Real(Box::new(level(&Trial::new(well(60)).even().wide(1.0).shared(), 1).unwrap()));
+        let electron =
+            AnyLevel::Real(Box::new(level(&Trial::new(well(60)).even().wide(1.0).shared(), 1).unwrap()));
         let hole = AnyLevel::Real(Box::new(level(&Trial::new(holes).even().wide(1.0).shared(), 1).unwrap()));
         let found = overlap(&electron, &hole).unwrap();
         let pi = std::f64::consts::PI;
         let mut sum = 0.0;
         for k in (2..=60).step_by(2) {
             let k = k as f64;
-            let amplitude = 8.0 / (pi * pi) * k / ((k * k - 1.0) * (k * k - 1.0)) / (0.5 * pi * pi * (k * k - 1.0));
+            let amplitude =
+                8.0 / (pi * pi) * k / ((k * k - 1.0) * (k * k - 1.0)) / (0.5 * pi * pi * (k * k - 1.0));
             sum += 2.25 * amplitude * amplitude;
         }
         assert!((found.coefficients[0] - 1.0).abs() < 1e-12);
         assert_eq!(found.coefficients[1], 0.0);
-        assert!((found.coefficients[2] + sum).abs() < 1e-12 * sum.max(1e-3), "{:e} {sum:e}", found.coefficients[2]);
+        assert!(
+            (found.coefficients[2] + sum).abs() < 1e-12 * sum.max(1e-3),
+            "{:e} {sum:e}",
+            found.coefficients[2]
+        );
     }
 
     /// Ground states of hard-walled wells of widths 1 and 3/2, centred: closed form of the overlap,

@@ -98,7 +98,8 @@ impl<T: Scalar> Model<T> for Trial<T> {
         if !(0.0..=1.0).contains(&from_wall) {
             return Some(T::zero());
         }
-        let sine = |k: usize| libm::sqrt(2.0 / width) * libm::sin((k + 1) as f64 * std::f64::consts::PI * from_wall);
+        let sine =
+            |k: usize| libm::sqrt(2.0 / width) * libm::sin((k + 1) as f64 * std::f64::consts::PI * from_wall);
         Some(state.iter().enumerate().fold(T::zero(), |sum, (k, x)| sum + x.scale(sine(k))))
     }
     fn quadrature(&self) -> Option<Vec<(f64, f64)>> {
