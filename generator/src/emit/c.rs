@@ -10,6 +10,8 @@ use crate::diagnostic::{Error, Result};
 use crate::formula::{Expr, Float, FloatForm, Formula, Numbers, horner, horner_slope};
 use crate::outcome::Outcome;
 
+mod fixed;
+
 /// Header and source.
 ///
 /// # Errors
@@ -18,8 +20,14 @@ pub fn print(outcome: &Outcome, stem: &str, formulas: &[Formula]) -> Result<[Sou
     let entries: Vec<Entry<'_>> = formulas.iter().map(super::entry).collect();
     let (words, sentence) = evaluation(formulas);
     let header = header::lines(outcome, stem, words, sentence, &entries);
-    let context = float_context(outcome, stem, formulas, &header)?;
-    let templates = [include_str!("../../../templates/float.h"), include_str!("../../../templates/float.c")];
+    let fixed = formulas.iter().any(|f| matches!(f.numbers, Numbers::Fixed(_)));
+    let (context, templates) = if fixed {
+        let templates = [include_str!("../../../templates/fixed.h"), include_str!("../../../templates/fixed.c")];
+        (fixed::context(outcome, stem, formulas, &header)?, templates)
+    } else {
+        let templates = [include_str!("../../../templates/float.h"), include_str!("../../../templates/float.c")];
+        (float_context(outcome, stem, formulas, &header)?, templates)
+    };
     let [h, c] = templates.map(|template| fill(template, &context));
     Ok([Source { file: format!("{stem}.h"), text: h? }, Source { file: format!("{stem}.c"), text: c? }])
 }

@@ -10,6 +10,7 @@ use crate::diagnostic::{Error, Result};
 use crate::formula::{Expr, Float, FloatForm, Formula, Numbers, horner, horner_slope};
 use crate::outcome::Outcome;
 
+mod fixed;
 mod float;
 
 /// The whole file.
@@ -85,10 +86,7 @@ fn module(outcome: &Outcome, formula: &Formula) -> Result<TokenStream> {
     match &formula.numbers {
         Numbers::Double(float) => float::module(outcome, formula, float, true),
         Numbers::Single(float) => float::module(outcome, formula, float, false),
-        Numbers::Fixed(fixed) => {
-            let _ = fixed;
-            Err(Error::internal("fixed"))
-        }
+        Numbers::Fixed(fixed) => fixed::module(outcome, formula, fixed)
     }
 }
 
@@ -106,7 +104,7 @@ fn helpers(formulas: &[Formula]) -> Result<TokenStream> {
             out.extend(match word {
                 "double" => float::root(true),
                 "single" => float::root(false),
-                _ => TokenStream::new(),
+                _ => fixed::root(),
             });
         }
     }

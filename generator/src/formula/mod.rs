@@ -13,7 +13,7 @@ mod fixed;
 mod float;
 mod tree;
 
-pub use fixed::Fixed;
+pub use fixed::{Fixed, FixedForm, Ladder};
 pub use float::{Float, FloatForm};
 pub use tree::{Expr, horner, horner_slope};
 
@@ -98,10 +98,7 @@ impl Formula {
         match format {
             NumberFormat::F64 => float::double(measured, control, tolerance_place, own_range),
             NumberFormat::F32 => float::single(measured, control, tolerance_place, own_range),
-            NumberFormat::Fixed { control: count, value } => {
-                let _ = (count, value);
-                Err(Error::internal("fixed point is being built"))
-            }
+            NumberFormat::Fixed { control: count, value } => fixed::fixed(measured, control, count, value, tolerance_place, own_range)
         }
     }
 

@@ -1,0 +1,174 @@
+/*
+{% for line in header %}
+ *{% if line %} {{ line }}{% endif +%}
+{% endfor %}
+ */
+#include "{{ stem }}.h"
+{% if shift32 %}
+
+/* Shift to the right that rounds down for negative numbers too: moved up to
+   where all are positive, shifted, and moved back. */
+static int32_t {{ stem }}_down32(int32_t x, uint32_t bits)
+{
+    return (int32_t)(((uint32_t)x ^ 0x80000000U) >> bits) - (int32_t)(0x80000000U >> bits);
+}
+{% endif %}
+{% if shift64 %}
+
+/* Shift to the right that rounds down for negative numbers too: moved up to
+   where all are positive, shifted, and moved back. */
+static int64_t {{ stem }}_down64(int64_t x, uint32_t bits)
+{
+    const uint64_t middle = (uint64_t)1 << 63;
+
+    return (int64_t)(((uint64_t)x ^ middle) >> bits) - (int64_t)(middle >> bits);
+}
+{% endif %}
+{% if root %}
+
+/* Square root rounded to nearest, one bit at a time; 0 for a negative number. */
+static int64_t {{ stem }}_root(int64_t x)
+{
+    uint64_t rest = (x < 0) ? 0U : (uint64_t)x;
+    uint64_t found = 0U;
+    uint64_t bit = (uint64_t)1 << 62;
+
+    while (bit != 0U) {
+        if (rest >= (found + bit)) {
+            rest -= found + bit;
+            found = (found >> 1) + bit;
+        } else {
+            found >>= 1;
+        }
+        bit >>= 2;
+    }
+    return (int64_t)((rest > found) ? (found + 1U) : found);
+}
+
+/* Quotient rounded to nearest, one bit at a time. */
+static int64_t {{ stem }}_quotient(uint64_t numerator, uint64_t denominator)
+{
+    uint64_t rest = 0U;
+    uint64_t found = 0U;
+    uint64_t bit = (uint64_t)1 << 63;
+
+    while (bit != 0U) {
+        rest <<= 1;
+        if ((numerator & bit) != 0U) {
+            rest += 1U;
+        }
+        if (rest >= denominator) {
+            rest -= denominator;
+            found |= bit;
+        }
+        bit >>= 1;
+    }
+    return (int64_t)((rest >= (denominator - rest)) ? (found + 1U) : found);
+}
+{% endif %}
+{% for f in formulas %}
+
+static {{ f.x }} {{ f.stem }}_held({{ f.x }} {{ argument }})
+{
+    return ({{ argument }} < {{ f.upper }}_FROM) ? ({{ f.x }}){{ f.upper }}_FROM
+         : (({{ argument }} > {{ f.upper }}_TO) ? ({{ f.x }}){{ f.upper }}_TO : {{ argument }});
+}
+
+{{ f.y }} {{ f.stem }}({{ f.x }} {{ argument }})
+{
+{% for line in f.value %}
+    {{ line }}
+{% endfor %}
+}
+
+int64_t {{ f.stem }}_slope({{ f.x }} {{ argument }})
+{
+{% for line in f.slope %}
+    {{ line }}
+{% endfor %}
+}
+
+{{ stem }}_status {{ f.stem }}_checked({{ f.x }} {{ argument }}, {{ f.y }} *value)
+{
+    {{ stem }}_status status = {{ upper }}_OK;
+
+    if ({{ argument }} < {{ f.upper }}_FROM) {
+        status = {{ upper }}_BELOW;
+    } else if ({{ argument }} > {{ f.upper }}_TO) {
+        status = {{ upper }}_ABOVE;
+    } else {
+        *value = {{ f.stem }}({{ argument }});
+    }
+    return status;
+}
+
+void {{ f.stem }}_many(const {{ f.x }} *{{ argument }}, {{ f.y }} *value, size_t count)
+{
+    size_t i;
+
+    for (i = 0; i < count; i++) {
+        value[i] = {{ f.stem }}({{ argument }}[i]);
+    }
+}
+
+/* Distance of the value at a count from the wanted one. */
+static int64_t {{ f.stem }}_miss({{ f.x }} {{ argument }}, int64_t wanted)
+{
+    const int64_t miss = (int64_t){{ f.stem }}({{ argument }}) - wanted;
+
+    return (miss < 0) ? -miss : miss;
+}
+
+/* Halves the stretch a fixed number of times and takes the nearer of the two
+   counts that are left. */
+static {{ stem }}_status {{ f.stem }}_search({{ f.y }} value, {{ f.x }} from, {{ f.x }} to, int rising, {{ f.x }} *found)
+{
+    const int64_t wanted = (int64_t)value;
+    const {{ f.x }} first = (rising != 0) ? from : to;
+    const {{ f.x }} last = (rising != 0) ? to : from;
+    const int64_t least = (int64_t){{ f.stem }}(first);
+    const int64_t most = (int64_t){{ f.stem }}(last);
+    {{ stem }}_status status = {{ upper }}_OK;
+
+    if ((wanted < (least - {{ f.upper }}_ROUNDING)) || (wanted > (most + {{ f.upper }}_ROUNDING))) {
+        status = {{ upper }}_NO_SOLUTION;
+    } else if (wanted <= least) {
+        *found = first;
+    } else if (wanted >= most) {
+        *found = last;
+    } else {
+        int64_t low = (int64_t)from;
+        int64_t high = (int64_t)to;
+        int step;
+
+        for (step = 0; step < {{ f.halvings }}; step++) {
+            /* Moved up by the lower end, so that the halving is of a positive number. */
+            const int64_t middle = low + (int64_t)((uint64_t)(high - low) >> 1);
+            const int under = ((int64_t){{ f.stem }}(({{ f.x }})middle) < wanted) ? 1 : 0;
+            if (under == rising) {
+                low = middle;
+            } else {
+                high = middle;
+            }
+        }
+        if ({{ f.stem }}_miss(({{ f.x }})low, wanted) <= {{ f.stem }}_miss(({{ f.x }})high, wanted)) {
+            *found = ({{ f.x }})low;
+        } else {
+            *found = ({{ f.x }})high;
+        }
+    }
+    return status;
+}
+{% for i in f.inverses %}
+
+{{ stem }}_status {{ f.stem }}_{{ i.name }}({{ f.y }} value, {{ f.x }} *{{ argument }})
+{
+{% if i.same %}
+    return {{ f.stem }}_inverse(value, {{ argument }});
+{% else %}
+    /* The formula {{ i.way }} there. */
+    return {{ f.stem }}_search(value, {{ i.low }}, {{ i.high }}, {{ i.rising }}, {{ argument }});
+{% endif %}
+}
+{% endfor %}
+{% endfor %}
