@@ -1,4 +1,5 @@
 //! Generated files, compiled by the tools of their language and run.
 
+mod fixed;
 mod float;
 mod samples;

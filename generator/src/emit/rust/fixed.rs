@@ -40,22 +40,35 @@ fn constants(ladder: &Ladder, prefix: &str, what: &str, unit: &str, ty: &str, pu
     Ok(out)
 }
 
-/// Statements that climb a ladder from `k`; the last is an expression.
-fn climb(ladder: &Ladder, prefix: &str) -> Result<TokenStream> {
+/// A ladder climbed from `k`: statements, the last expression, and whether `k` occurs.
+struct Climb {
+    steps: TokenStream,
+    last: TokenStream,
+    counts: bool,
+}
+
+fn climb(ladder: &Ladder, prefix: &str) -> Result<Climb> {
     let used = ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
     let name = |word: &str| if prefix.is_empty() { word.to_owned() } else { format!("{prefix}_{word}") };
     let coefficients = if prefix.is_empty() { "COEFFICIENTS" } else { prefix };
-    let mut text = format!("{coefficients}[{used}]");
+    let mut steps = String::new();
+    let mut last = format!("{coefficients}[{used}]");
     for (power, rung) in ladder.rungs.iter().enumerate().take(used).rev() {
-        let product = format!("k * {}", if text.contains(' ') { format!("({text})") } else { text });
-        let shifted = match (rung.shift, rung.before) {
-            (0, _) => product,
-            _ => format!("(({product} + {}[{power}]) >> {}[{power}])", name("BEFORE"), name("SHIFTS")),
+        let sum = if power + 1 == used {
+            last
+        } else {
+            steps.push_str(&format!("let sum = {last};"));
+            "sum".to_owned()
         };
-        text = if rung.constant == 0 { shifted } else { format!("{coefficients}[{power}] + {shifted}") };
+        let bare = rung.constant == 0;
+        let shifted = match (rung.shift, bare) {
+            (0, _) => format!("k * {sum}"),
+            (_, true) => format!("(k * {sum} + {}[{power}]) >> {}[{power}]", name("BEFORE"), name("SHIFTS")),
+            (_, false) => format!("((k * {sum} + {}[{power}]) >> {}[{power}])", name("BEFORE"), name("SHIFTS")),
+        };
+        last = if bare { shifted } else { format!("{coefficients}[{power}] + {shifted}") };
     }
-    // One statement per rung reads better than one nested line.
-    tokens(&text)
+    Ok(Climb { steps: tokens(&steps)?, last: tokens(&last)?, counts: used > 0 })
 }
 
 /// One formula's module.
@@ -206,55 +219,66 @@ fn bodies(fixed: &Fixed, x: &str, y: &str, work: &str, argument: &Ident) -> Resu
     let k = if fixed.origin == 0 { quote! { let k = #narrow; } } else { quote! { let k = #narrow - ORIGIN; } };
     let k_wide = if fixed.origin == 0 { quote! { let k = #wide; } } else { quote! { let k = #wide - #origin; } };
     let cast = |text: TokenStream| if y == work { text } else { quote! { (#text) as #y_ty } };
+    let offset = |k: &TokenStream, climbs: &[&Climb]| {
+        if climbs.iter().any(|c| c.counts) { (quote! { #argument }, k.clone()) } else { (quote! { _ }, quote! {}) }
+    };
     let (value, slope) = match &fixed.form {
         FixedForm::Polynomial { value, slope } => {
-            let (value, slope) = (cast(climb(value, "")?), climb(slope, "SLOPE")?);
-            (quote! { #k #value }, quote! { #k_wide #slope })
+            let (value, slope) = (climb(value, "")?, climb(slope, "SLOPE")?);
+            let ((a, k), (b, k_wide)) = (offset(&k, &[&value]), offset(&k_wide, &[&slope]));
+            let (steps, last) = (&value.steps, cast(value.last.clone()));
+            let (slope_steps, slope_last) = (&slope.steps, &slope.last);
+            ((a, quote! { #k #steps #last }), (b, quote! { #k_wide #slope_steps #slope_last }))
         }
         FixedForm::Paired { mean, mean_slope, half_gap_squared, half_gap_squared_slope, upper } => {
             let (mean, squared) = (climb(mean, "MEAN")?, climb(half_gap_squared, "HALF_GAP_SQUARED")?);
             let (mean_slope, squared_slope) =
                 (climb(mean_slope, "MEAN_SLOPE")?, climb(half_gap_squared_slope, "SQUARED_SLOPE")?);
+            let ((a, k), (b, k_wide)) =
+                (offset(&k, &[&mean, &squared]), offset(&k_wide, &[&mean_slope, &squared, &squared_slope]));
             let sign = if *upper { quote! { + } } else { quote! { - } };
             let sum = cast(quote! { mean #sign root(half_gap_squared) });
-            let (down, up) =
-                if *upper { (quote! { slope - part }, quote! { slope + part }) } else { (quote! { slope + part }, quote! { slope - part }) };
-            (
-                quote! {
-                    #k
-                    let mean = #mean;
-                    let half_gap_squared = #squared;
-                    #sum
-                },
-                quote! {
-                    #k_wide
-                    let slope = #mean_slope;
-                    let half_gap = root(#squared);
-                    if half_gap == 0 {
-                        return slope;
-                    }
-                    let squared_slope = #squared_slope;
-                    let part = quotient(squared_slope.unsigned_abs(), 2 * half_gap.unsigned_abs());
-                    if squared_slope < 0 { #down } else { #up }
-                },
-            )
+            let (minus, plus) = (quote! { slope - part }, quote! { slope + part });
+            let (down, up) = if *upper { (minus, plus) } else { (plus, minus) };
+            let (mean_steps, mean_last) = (&mean.steps, &mean.last);
+            let (squared_steps, squared_last) = (&squared.steps, &squared.last);
+            let (slope_steps, slope_last) = (&mean_slope.steps, &mean_slope.last);
+            let (rise_steps, rise_last) = (&squared_slope.steps, &squared_slope.last);
+            let value = quote! {
+                #k
+                #mean_steps
+                let mean = #mean_last;
+                #squared_steps
+                let half_gap_squared = #squared_last;
+                #sum
+            };
+            let slope = quote! {
+                #k_wide
+                #slope_steps
+                let slope = #slope_last;
+                #squared_steps
+                let half_gap = root(#squared_last);
+                if half_gap == 0 {
+                    return slope;
+                }
+                #rise_steps
+                let squared_slope = #rise_last;
+                let part = quotient(squared_slope.unsigned_abs(), 2 * half_gap.unsigned_abs());
+                if squared_slope < 0 { #down } else { #up }
+            };
+            ((a, value), (b, slope))
         }
     };
+    let ((a, value), (b, slope)) = (value, slope);
     Ok(quote! {
         #[doc = " The formula; counts outside the range are held at its ends."]
         #[must_use]
-        pub fn value(#argument: #x_ty) -> #y_ty { #value }
+        pub fn value(#a: #x_ty) -> #y_ty { #value }
         #[doc = " Derivative of [`value`]: value steps per control step, times 2^16."]
         #[must_use]
-        pub fn slope(#argument: #x_ty) -> i64 { #slope }
+        pub fn slope(#b: #x_ty) -> i64 { #slope }
         fn held(#argument: #x_ty) -> #x_ty {
-            if #argument < FROM {
-                FROM
-            } else if #argument > TO {
-                TO
-            } else {
-                #argument
-            }
+            #argument.clamp(FROM, TO)
         }
     })
 }
@@ -297,7 +321,7 @@ fn inverses(fixed: &Fixed, x: &str, y: &str) -> Result<TokenStream> {
     let halvings = Literal::u32_unsuffixed(fixed.control_bits);
     let wide = if y == "i64" { quote! { value } } else { quote! { i64::from(value) } };
     let at = |end: TokenStream| quote! { i64::from(self::value(#end)) };
-    let (first, last, at_low, at_high) = (at(quote! { first }), at(quote! { last }), at(quote! { low }), at(quote! { high }));
+    let (first, last, at_low, at_high) = (at(quote! { bottom }), at(quote! { top }), at(quote! { low }), at(quote! { high }));
     // 32-bit counts may lie further apart than their own type holds.
     let middle = if x == "i32" {
         quote! { let middle = (i64::from(low) + i64::from(high)) >> 1; let middle = middle as i32; }
@@ -307,17 +331,17 @@ fn inverses(fixed: &Fixed, x: &str, y: &str) -> Result<TokenStream> {
     out.extend(quote! {
         #[doc = " Halves the stretch a fixed number of times and takes the nearer of the two counts that are left."]
         fn search(value: #y_ty, mut low: #x_ty, mut high: #x_ty, rising: bool) -> Result<#x_ty, OutOfRange> {
-            let (first, last) = if rising { (low, high) } else { (high, low) };
+            let (bottom, top) = if rising { (low, high) } else { (high, low) };
             let value = #wide;
             let (least, most) = (#first, #last);
             if value < least - ROUNDING || value > most + ROUNDING {
                 return Err(OutOfRange::NoSolution);
             }
             if value <= least {
-                return Ok(first);
+                return Ok(bottom);
             }
             if value >= most {
-                return Ok(last);
+                return Ok(top);
             }
             for _ in 0..#halvings {
                 #middle
