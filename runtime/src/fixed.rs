@@ -210,7 +210,10 @@ mod tests {
     fn quotients_are_rounded_to_nearest() {
         for numerator in 0..400_u64 {
             for denominator in 1..40_u64 {
-                assert_eq!(quotient(numerator, denominator), (2 * numerator + denominator) / (2 * denominator));
+                assert_eq!(
+                    quotient(numerator, denominator),
+                    (2 * numerator + denominator) / (2 * denominator)
+                );
             }
         }
         assert_eq!(quotient(u64::MAX >> 1, 1), u64::MAX >> 1);

@@ -84,10 +84,18 @@ fn expected(formula: &Formula, at: f64) -> String {
         }
     }
     let name = &formula.measured.name;
-    println!("{name}: rounding {worst:.3e}, bound {:.3e}, {} bits", formula.rounding, if fixed.wide { 64 } else { 32 });
+    println!(
+        "{name}: rounding {worst:.3e}, bound {:.3e}, {} bits",
+        formula.rounding,
+        if fixed.wide { 64 } else { 32 }
+    );
     assert!(worst <= formula.rounding * (1.0 + 1e-9), "{name}: {worst:e} {:e}", formula.rounding);
     // A constant may be exact; double precision of its coefficient still counts.
-    assert!(formula.rounding <= 20.0 * worst + 1e-9 * fixed.value_step, "{name}: {worst:e} {:e}", formula.rounding);
+    assert!(
+        formula.rounding <= 20.0 * worst + 1e-9 * fixed.value_step,
+        "{name}: {worst:e} {:e}",
+        formula.rounding
+    );
     assert!(worst_back <= formula.inverse_rounding, "{name}: {worst_back:e} {:e}", formula.inverse_rounding);
     format!("{name} {sum:x}\n")
 }
@@ -103,7 +111,10 @@ fn rust_program(stem: &str, formulas: &[Formula]) -> String {
         let name = &formula.measured.name;
         let y = format!("i{}", numbers(formula).value_bits);
         let _ = writeln!(out, "{{ use {stem}::{name}::*; let mut s = 0xcbf2_9ce4_8422_2325_u64;");
-        let _ = writeln!(out, "for n in i16::MIN..=i16::MAX {{ let mut y = [0]; many(&[n], &mut y); let y = y[0]; assert_eq!(y, value(n));");
+        let _ = writeln!(
+            out,
+            "for n in i16::MIN..=i16::MAX {{ let mut y = [0]; many(&[n], &mut y); let y = y[0]; assert_eq!(y, value(n));"
+        );
         let _ = writeln!(out, "s = mix(mix(s, y.into()), slope(n)); s = put(s, checked(n));");
         for (inverse, ..) in numbers(formula).branches() {
             let _ = writeln!(out, "s = put(s, {inverse}(y)); s = put(s, {inverse}({y}::from(n)));");
@@ -124,10 +135,19 @@ fn c_program(stem: &str, formulas: &[Formula]) -> String {
     for formula in formulas {
         let name = format!("{stem}_{}", formula.measured.name);
         let y = format!("int{}_t", numbers(formula).value_bits);
-        let _ = writeln!(out, "s = UINT64_C(0xcbf29ce484222325);\nfor (i = -32768; i < 32768; i++) {{ int16_t n = (int16_t)i; int16_t b = 0; {y} v = 0; {y} y; {stem}_status t;");
-        let _ = writeln!(out, "{name}_many(&n, &y, 1); mix(y); mix({name}_slope(n)); t = {name}_checked(n, &v); put(t, v);");
+        let _ = writeln!(
+            out,
+            "s = UINT64_C(0xcbf29ce484222325);\nfor (i = -32768; i < 32768; i++) {{ int16_t n = (int16_t)i; int16_t b = 0; {y} v = 0; {y} y; {stem}_status t;"
+        );
+        let _ = writeln!(
+            out,
+            "{name}_many(&n, &y, 1); mix(y); mix({name}_slope(n)); t = {name}_checked(n, &v); put(t, v);"
+        );
         for (inverse, ..) in numbers(formula).branches() {
-            let _ = writeln!(out, "t = {name}_{inverse}(y, &b); put(t, b); t = {name}_{inverse}(n, &b); put(t, b);");
+            let _ = writeln!(
+                out,
+                "t = {name}_{inverse}(y, &b); put(t, b); t = {name}_{inverse}(n, &b); put(t, b);"
+            );
         }
         let _ = writeln!(out, "}} printf(\"{} %\" PRIx64 \"\\n\", s);", formula.measured.name);
     }
@@ -159,7 +179,22 @@ fn every_code(at: f64, value: (u32, f64), label: &str) {
     let expected: String = formulas.iter().map(|f| expected(f, at)).collect();
     let path = scratch.path();
     // Overflow checks on: every addition and product is watched.
-    tool(path, "rustc", &["--edition", "2021", "-O", "-C", "overflow-checks=on", "-D", "warnings", "main.rs", "-o", "from_rust"]);
+    tool(
+        path,
+        "rustc",
+        &[
+            "--edition",
+            "2021",
+            "-O",
+            "-C",
+            "overflow-checks=on",
+            "-D",
+            "warnings",
+            "main.rs",
+            "-o",
+            "from_rust",
+        ],
+    );
     let run = |program: &str| {
         let output = std::process::Command::new(path.join(program)).output().expect("the program starts");
         assert!(output.status.success(), "{}", text(&output));
@@ -174,11 +209,43 @@ fn every_code(at: f64, value: (u32, f64), label: &str) {
         let sanitize = format!("-fsanitize={sanitizer}");
         arguments.extend([sanitize.as_str(), "-fno-sanitize-recover=all"]);
         tool(path, compiler, &arguments);
-        tool(path, compiler, &["-std=c99", "-O1", "main.c", "formula.o", &format!("-fsanitize={}", "undefined"), "-o", "from_c"]);
+        tool(
+            path,
+            compiler,
+            &[
+                "-std=c99",
+                "-O1",
+                "main.c",
+                "formula.o",
+                &format!("-fsanitize={}", "undefined"),
+                "-o",
+                "from_c",
+            ],
+        );
         assert_eq!(run("from_c"), expected, "{compiler}");
     }
     tool(path, "g++", &["-x", "c++", "-fsyntax-only", "-Wall", "-Werror", &format!("{stem}.h")]);
-    tool(path, "clippy-driver", &["--edition", "2021", "--crate-type", "lib", "--emit", "metadata", "-D", "warnings", "-D", "clippy::all", "-D", "clippy::pedantic", &format!("{stem}.rs"), "-o", "x.rmeta"]);
+    tool(
+        path,
+        "clippy-driver",
+        &[
+            "--edition",
+            "2021",
+            "--crate-type",
+            "lib",
+            "--emit",
+            "metadata",
+            "-D",
+            "warnings",
+            "-D",
+            "clippy::all",
+            "-D",
+            "clippy::pedantic",
+            &format!("{stem}.rs"),
+            "-o",
+            "x.rmeta",
+        ],
+    );
 }
 
 #[test]
@@ -198,8 +265,9 @@ fn steps_and_widths_that_cannot_do_are_refused_with_one_that_would() {
     let outcome = samples::outcome("shapes", "F", 0.0, samples::every_shape(0.0));
     let refused = |control, value| {
         let f = &outcome.formulas[1];
-        let error = Formula::new(f, &outcome.control, &format(control, value), None, &|_| Ok(f.valid.clone()))
-            .expect_err("it cannot be done");
+        let error =
+            Formula::new(f, &outcome.control, &format(control, value), None, &|_| Ok(f.valid.clone()))
+                .expect_err("it cannot be done");
         assert_eq!(error.exit_status(), 2);
         let one = error.diagnostics()[0].clone();
         assert!(one.place.is_some());

@@ -22,10 +22,12 @@ pub fn print(outcome: &Outcome, stem: &str, formulas: &[Formula]) -> Result<[Sou
     let header = header::lines(outcome, stem, words, sentence, &entries);
     let fixed = formulas.iter().any(|f| matches!(f.numbers, Numbers::Fixed(_)));
     let (context, templates) = if fixed {
-        let templates = [include_str!("../../../templates/fixed.h"), include_str!("../../../templates/fixed.c")];
+        let templates =
+            [include_str!("../../../templates/fixed.h"), include_str!("../../../templates/fixed.c")];
         (fixed::context(outcome, stem, formulas, &header)?, templates)
     } else {
-        let templates = [include_str!("../../../templates/float.h"), include_str!("../../../templates/float.c")];
+        let templates =
+            [include_str!("../../../templates/float.h"), include_str!("../../../templates/float.c")];
         (float_context(outcome, stem, formulas, &header)?, templates)
     };
     let [h, c] = templates.map(|template| fill(template, &context));

@@ -86,7 +86,7 @@ fn module(outcome: &Outcome, formula: &Formula) -> Result<TokenStream> {
     match &formula.numbers {
         Numbers::Double(float) => float::module(outcome, formula, float, true),
         Numbers::Single(float) => float::module(outcome, formula, float, false),
-        Numbers::Fixed(fixed) => fixed::module(outcome, formula, fixed)
+        Numbers::Fixed(fixed) => fixed::module(outcome, formula, fixed),
     }
 }
 

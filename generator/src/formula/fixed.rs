@@ -141,7 +141,9 @@ impl Fixed {
         let mut out = vec![("inverse", "that holds the operating point", self.main, false)];
         let below = "that ends at the turning point nearest the operating point";
         let above = "that begins at the turning point nearest the operating point";
-        for (name, words, branch) in [("inverse_below", below, self.below), ("inverse_above", above, self.above)] {
+        for (name, words, branch) in
+            [("inverse_below", below, self.below), ("inverse_above", above, self.above)]
+        {
             if let Some(branch) = branch {
                 out.push((name, words, branch, branch == self.main));
             }
@@ -199,10 +201,16 @@ pub fn fixed(
     let (from, to) = (inwards_up(valid.from / count.step), inwards_down(valid.to / count.step));
     if from >= to {
         return Err(Error::spec(
-            Diagnostic::new("step", format!("the range of `{}` holds no two counts of the control", measured.name))
-                .at(Some(count.place.clone()))
-                .found(format!("{:?} to {:?} {} in steps of {:?}", valid.from, valid.to, control.unit, count.step))
-                .action(format!("choose a step of at most {}", nice(0.01 * (valid.to - valid.from)))),
+            Diagnostic::new(
+                "step",
+                format!("the range of `{}` holds no two counts of the control", measured.name),
+            )
+            .at(Some(count.place.clone()))
+            .found(format!(
+                "{:?} to {:?} {} in steps of {:?}",
+                valid.from, valid.to, control.unit, count.step
+            ))
+            .action(format!("choose a step of at most {}", nice(0.01 * (valid.to - valid.from)))),
         ));
     }
     (valid.from, valid.to) = (from * count.step, to * count.step);
@@ -396,11 +404,19 @@ fn padded(mut c: Vec<f64>) -> Vec<f64> {
 }
 
 /// Stretches of the range between turning points, to whole counts.
-fn branches(counts: &Counts, from: f64, to: f64, origin: f64, at: f64) -> (Branch, Option<Branch>, Option<Branch>) {
+fn branches(
+    counts: &Counts,
+    from: f64,
+    to: f64,
+    origin: f64,
+    at: f64,
+) -> (Branch, Option<Branch>, Option<Branch>) {
     // The operating point is the double formula's, so that it counts as a cut where it is one.
     let form = match &counts.gap {
         None => double::Form::Polynomial(&counts.main),
-        Some((gap, upper)) => double::Form::Paired { mean: &counts.main, half_gap_squared: gap, upper: *upper },
+        Some((gap, upper)) => {
+            double::Form::Paired { mean: &counts.main, half_gap_squared: gap, upper: *upper }
+        }
     };
     let formula = double::Formula { from: from - origin, to: to - origin, at: 0.0, rounding: 0.0, form };
     let found = formula.branches();
@@ -453,11 +469,17 @@ fn control_fits(
     let farthest = valid.from.abs().max(valid.to.abs());
     let step = round_up(farthest / limits.1);
     Err(Error::spec(
-        Diagnostic::new("width", format!("the range of `{}` does not fit the control's count", measured.name))
-            .at(Some(count.place.clone()))
-            .found(format!("{:?} to {:?} in steps of {:?}: counts {} to {}", valid.from, valid.to, count.step, whole.0, whole.1))
-            .expected(format!("counts from {} to {}, as {} bits hold", limits.0, limits.1, count.bits))
-            .action(format!("choose a step of at least {step}{}", wider(count.bits))),
+        Diagnostic::new(
+            "width",
+            format!("the range of `{}` does not fit the control's count", measured.name),
+        )
+        .at(Some(count.place.clone()))
+        .found(format!(
+            "{:?} to {:?} in steps of {:?}: counts {} to {}",
+            valid.from, valid.to, count.step, whole.0, whole.1
+        ))
+        .expected(format!("counts from {} to {}, as {} bits hold", limits.0, limits.1, count.bits))
+        .action(format!("choose a step of at least {step}{}", wider(count.bits))),
     ))
 }
 
@@ -498,7 +520,11 @@ fn value_fits(
             .at(Some(value.place.clone()))
             .found(format!("counts {least:.0} to {most:.0} in steps of {:?} {}", value.step, measured.unit))
             .expected(format!("counts from {} to {}, as {} bits hold", limits.0, limits.1, value.bits))
-            .action(format!("choose a step of at least {}{}{shift}", round_up(1.02 * farthest / limits.1), wider(value.bits))),
+            .action(format!(
+                "choose a step of at least {}{}{shift}",
+                round_up(1.02 * farthest / limits.1),
+                wider(value.bits)
+            )),
     ))
 }
 
@@ -516,13 +542,19 @@ fn does_not_fit(measured: &FormulaOutcome, value: &Count, counts: &Counts, limit
 fn step_too_coarse(measured: &FormulaOutcome, value: &Count, place: Option<&Place>, rounding: f64) -> Error {
     let place = Some(value.place.clone()).or_else(|| place.cloned());
     Error::spec(
-        Diagnostic::new("step", format!("`{}` cannot keep its tolerance in counts of this step", measured.name))
-            .at(place)
-            .found(format!(
-                "a rounding of up to {rounding:.2e} {} from a step of {:?} against a tolerance of {:?}",
-                measured.unit, value.step, measured.tolerance
-            ))
-            .action(format!("choose a step of at most {}", nice(0.25 * value.step * measured.tolerance / rounding))),
+        Diagnostic::new(
+            "step",
+            format!("`{}` cannot keep its tolerance in counts of this step", measured.name),
+        )
+        .at(place)
+        .found(format!(
+            "a rounding of up to {rounding:.2e} {} from a step of {:?} against a tolerance of {:?}",
+            measured.unit, value.step, measured.tolerance
+        ))
+        .action(format!(
+            "choose a step of at most {}",
+            nice(0.25 * value.step * measured.tolerance / rounding)
+        )),
     )
 }
 
@@ -549,7 +581,11 @@ mod tests {
                     worst = worst.max((climb(&ladder.rungs, k) as f64 - exact).abs());
                 }
                 assert!(worst <= ladder.error, "{c:?} {bits} {scale}: {worst} {}", ladder.error);
-                assert!(ladder.error <= 20.0 * worst.max(0.25), "{c:?} {bits} {scale}: {worst} {}", ladder.error);
+                assert!(
+                    ladder.error <= 20.0 * worst.max(0.25),
+                    "{c:?} {bits} {scale}: {worst} {}",
+                    ladder.error
+                );
             }
         }
     }

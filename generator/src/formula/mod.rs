@@ -98,7 +98,9 @@ impl Formula {
         match format {
             NumberFormat::F64 => float::double(measured, control, tolerance_place, own_range),
             NumberFormat::F32 => float::single(measured, control, tolerance_place, own_range),
-            NumberFormat::Fixed { control: count, value } => fixed::fixed(measured, control, count, value, tolerance_place, own_range)
+            NumberFormat::Fixed { control: count, value } => {
+                fixed::fixed(measured, control, count, value, tolerance_place, own_range)
+            }
         }
     }
 

@@ -22,7 +22,12 @@ fn whole(value: i64, wide: bool) -> String {
 }
 
 /// Template values of a file.
-pub(super) fn context(outcome: &Outcome, stem: &str, formulas: &[Formula], header: &[String]) -> Result<Value> {
+pub(super) fn context(
+    outcome: &Outcome,
+    stem: &str,
+    formulas: &[Formula],
+    header: &[String],
+) -> Result<Value> {
     let argument = arguments(&outcome.control.symbol);
     let mut list = Vec::new();
     let (mut root, mut shift32, mut shift64) = (false, false, false);
@@ -110,11 +115,19 @@ fn constants(outcome: &Outcome, formula: &Formula, fixed: &Fixed) -> Vec<Value> 
     plain("VALUE_STEP", format!("One count of the value, in {unit}."), real(fixed.value_step));
     plain("PHYSICAL_FROM", format!("Lower end of the range, in {control}."), real(formula.valid.from));
     plain("PHYSICAL_TO", format!("Upper end of the range, in {control}."), real(formula.valid.to));
-    plain("PHYSICAL_E0", format!("Level at the operating point, in {unit}."), real(formula.measured.series[0]));
+    plain(
+        "PHYSICAL_E0",
+        format!("Level at the operating point, in {unit}."),
+        real(formula.measured.series[0]),
+    );
     plain("ORIGIN", "Count from which the polynomials are taken.".into(), whole(fixed.origin, fixed.wide));
     let mut ladder = |prefix: &str, what: &str, ladder: &Ladder, wide: bool| {
         for (k, rung) in ladder.rungs.iter().enumerate() {
-            push(format!("{prefix}{k}"), format!("{what}: coefficient of count^{k}, scaled by the shifts."), whole(rung.constant, wide));
+            push(
+                format!("{prefix}{k}"),
+                format!("{what}: coefficient of count^{k}, scaled by the shifts."),
+                whole(rung.constant, wide),
+            );
             if rung.shift > 0 {
                 push(
                     format!("{prefix}{k}_BEFORE"),
@@ -134,8 +147,17 @@ fn constants(outcome: &Outcome, formula: &Formula, fixed: &Fixed) -> Vec<Value> 
             ladder("MEAN_", "Mean", mean, true);
             ladder("HALF_GAP_SQUARED_", "Squared half gap", half_gap_squared, true);
             ladder("MEAN_SLOPE_", "Slope of the mean times 2^16", mean_slope, true);
-            ladder("SQUARED_SLOPE_", "Slope of the squared half gap times 2^16", half_gap_squared_slope, true);
-            push("SIGN".into(), "Sign of the half gap.".into(), if *upper { "1".into() } else { "-1".into() });
+            ladder(
+                "SQUARED_SLOPE_",
+                "Slope of the squared half gap times 2^16",
+                half_gap_squared_slope,
+                true,
+            );
+            push(
+                "SIGN".into(),
+                "Sign of the half gap.".into(),
+                if *upper { "1".into() } else { "-1".into() },
+            );
         }
     }
     out
@@ -145,7 +167,8 @@ fn constants(outcome: &Outcome, formula: &Formula, fixed: &Fixed) -> Vec<Value> 
 fn climb(ladder: &Ladder, name: &str, stem: &str, prefix: &str, wide: bool) -> Vec<String> {
     let ty = if wide { "int64_t" } else { "int32_t" };
     let bits = if wide { 64 } else { 32 };
-    let used = ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
+    let used =
+        ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
     let mut out = vec![format!("{ty} {name} = {prefix}{used};")];
     for (k, rung) in ladder.rungs.iter().enumerate().take(used).rev() {
         let product = format!("k * {name}");
@@ -195,13 +218,17 @@ fn bodies(fixed: &Fixed, stem: &str, lower: &str, upper: &str, argument: &str) -
         }
         FixedForm::Paired { mean, mean_slope, half_gap_squared, half_gap_squared_slope, upper } => {
             let sign = if *upper { '+' } else { '-' };
-            let mut a = climbs(true, &[(mean, "mean", "MEAN_"), (half_gap_squared, "squared", "HALF_GAP_SQUARED_")]);
+            let mut a =
+                climbs(true, &[(mean, "mean", "MEAN_"), (half_gap_squared, "squared", "HALF_GAP_SQUARED_")]);
             a.push(format!("return ({y})(mean {sign} {stem}_root(squared));"));
-            let mut b = climbs(true, &[
-                (mean_slope, "slope", "MEAN_SLOPE_"),
-                (half_gap_squared, "squared", "HALF_GAP_SQUARED_"),
-                (half_gap_squared_slope, "rise", "SQUARED_SLOPE_"),
-            ]);
+            let mut b = climbs(
+                true,
+                &[
+                    (mean_slope, "slope", "MEAN_SLOPE_"),
+                    (half_gap_squared, "squared", "HALF_GAP_SQUARED_"),
+                    (half_gap_squared_slope, "rise", "SQUARED_SLOPE_"),
+                ],
+            );
             let (down, up) = if *upper { ("-=", "+=") } else { ("+=", "-=") };
             b.extend([
                 format!("squared = {stem}_root(squared);"),

@@ -6,23 +6,43 @@ use shiftwright_runtime::fixed::{Branch, Rung};
 
 fn whole(value: i64) -> TokenStream {
     let literal = Literal::u64_unsuffixed(value.unsigned_abs());
-    if value < 0 { quote! { -#literal } } else { quote! { #literal } }
+    if value < 0 {
+        quote! { -#literal }
+    } else {
+        quote! { #literal }
+    }
 }
 
 fn real_number(value: f64) -> Result<TokenStream> {
     let literal: Literal = real(value.abs()).parse().map_err(Error::internal)?;
-    Ok(if value.is_sign_negative() { quote! { -#literal } } else { quote! { #literal } })
+    Ok(if value.is_sign_negative() {
+        quote! { -#literal }
+    } else {
+        quote! { #literal }
+    })
 }
 
 /// Constants of a ladder: coefficients, what is added before the shifts, shifts.
-fn constants(ladder: &Ladder, prefix: &str, what: &str, unit: &str, ty: &str, public: bool) -> Result<TokenStream> {
+fn constants(
+    ladder: &Ladder,
+    prefix: &str,
+    what: &str,
+    unit: &str,
+    ty: &str,
+    public: bool,
+) -> Result<TokenStream> {
     let n = ladder.rungs.len();
     let list = |f: &dyn Fn(&Rung) -> i64| ladder.rungs.iter().map(|r| whole(f(r))).collect::<Vec<_>>();
     let coefficients = list(&|r| r.constant);
     let name = if prefix.is_empty() { "COEFFICIENTS".to_owned() } else { prefix.to_owned() };
-    let part = |word: &str| ident(&if prefix.is_empty() { word.to_owned() } else { format!("{prefix}_{word}") });
+    let part =
+        |word: &str| ident(&if prefix.is_empty() { word.to_owned() } else { format!("{prefix}_{word}") });
     let (name, ty) = (ident(&name), ident(ty));
-    let visible = if public { quote! { pub } } else { quote! {} };
+    let visible = if public {
+        quote! { pub }
+    } else {
+        quote! {}
+    };
     let about = doc(&format!("{what} by rising power of the count, scaled by the shifts below; {unit}."));
     let mut out = quote! { #about #visible const #name: [#ty; #n] = [#(#coefficients),*]; };
     if n > 1 {
@@ -48,7 +68,8 @@ struct Climb {
 }
 
 fn climb(ladder: &Ladder, prefix: &str) -> Result<Climb> {
-    let used = ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
+    let used =
+        ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
     let name = |word: &str| if prefix.is_empty() { word.to_owned() } else { format!("{prefix}_{word}") };
     let coefficients = if prefix.is_empty() { "COEFFICIENTS" } else { prefix };
     let mut steps = String::new();
@@ -64,7 +85,9 @@ fn climb(ladder: &Ladder, prefix: &str) -> Result<Climb> {
         let shifted = match (rung.shift, bare) {
             (0, _) => format!("k * {sum}"),
             (_, true) => format!("(k * {sum} + {}[{power}]) >> {}[{power}]", name("BEFORE"), name("SHIFTS")),
-            (_, false) => format!("((k * {sum} + {}[{power}]) >> {}[{power}])", name("BEFORE"), name("SHIFTS")),
+            (_, false) => {
+                format!("((k * {sum} + {}[{power}]) >> {}[{power}])", name("BEFORE"), name("SHIFTS"))
+            }
         };
         last = if bare { shifted } else { format!("{coefficients}[{power}] + {shifted}") };
     }
@@ -130,7 +153,14 @@ pub(super) fn module(outcome: &Outcome, formula: &Formula, fixed: &Fixed) -> Res
     tokens(&module.to_string().replace("usize", ""))
 }
 
-fn ends(outcome: &Outcome, formula: &Formula, fixed: &Fixed, x: &str, y: &str, work: &str) -> Result<TokenStream> {
+fn ends(
+    outcome: &Outcome,
+    formula: &Formula,
+    fixed: &Fixed,
+    x: &str,
+    y: &str,
+    work: &str,
+) -> Result<TokenStream> {
     let control_unit = unit_name(&outcome.control.unit);
     let unit = unit_name(&formula.measured.unit);
     let (x, _, work) = (ident(x), y, ident(work));
@@ -212,15 +242,41 @@ fn numbers(fixed: &Fixed, work: &str) -> Result<TokenStream> {
 fn bodies(fixed: &Fixed, x: &str, y: &str, work: &str, argument: &Ident) -> Result<TokenStream> {
     let (x_ty, y_ty, work_ty) = (ident(x), ident(y), ident(work));
     let widened = |ty: &Ident| {
-        if *ty == x { quote! { held(#argument) } } else { quote! { #ty::from(held(#argument)) } }
+        if *ty == x {
+            quote! { held(#argument) }
+        } else {
+            quote! { #ty::from(held(#argument)) }
+        }
     };
     let (narrow, wide) = (widened(&work_ty), widened(&ident("i64")));
-    let origin = if fixed.wide { quote! { ORIGIN } } else { quote! { i64::from(ORIGIN) } };
-    let k = if fixed.origin == 0 { quote! { let k = #narrow; } } else { quote! { let k = #narrow - ORIGIN; } };
-    let k_wide = if fixed.origin == 0 { quote! { let k = #wide; } } else { quote! { let k = #wide - #origin; } };
-    let cast = |text: TokenStream| if y == work { text } else { quote! { (#text) as #y_ty } };
+    let origin = if fixed.wide {
+        quote! { ORIGIN }
+    } else {
+        quote! { i64::from(ORIGIN) }
+    };
+    let k = if fixed.origin == 0 {
+        quote! { let k = #narrow; }
+    } else {
+        quote! { let k = #narrow - ORIGIN; }
+    };
+    let k_wide = if fixed.origin == 0 {
+        quote! { let k = #wide; }
+    } else {
+        quote! { let k = #wide - #origin; }
+    };
+    let cast = |text: TokenStream| {
+        if y == work {
+            text
+        } else {
+            quote! { (#text) as #y_ty }
+        }
+    };
     let offset = |k: &TokenStream, climbs: &[&Climb]| {
-        if climbs.iter().any(|c| c.counts) { (quote! { #argument }, k.clone()) } else { (quote! { _ }, quote! {}) }
+        if climbs.iter().any(|c| c.counts) {
+            (quote! { #argument }, k.clone())
+        } else {
+            (quote! { _ }, quote! {})
+        }
     };
     let (value, slope) = match &fixed.form {
         FixedForm::Polynomial { value, slope } => {
@@ -236,7 +292,11 @@ fn bodies(fixed: &Fixed, x: &str, y: &str, work: &str, argument: &Ident) -> Resu
                 (climb(mean_slope, "MEAN_SLOPE")?, climb(half_gap_squared_slope, "SQUARED_SLOPE")?);
             let ((a, k), (b, k_wide)) =
                 (offset(&k, &[&mean, &squared]), offset(&k_wide, &[&mean_slope, &squared, &squared_slope]));
-            let sign = if *upper { quote! { + } } else { quote! { - } };
+            let sign = if *upper {
+                quote! { + }
+            } else {
+                quote! { - }
+            };
             let sum = cast(quote! { mean #sign root(half_gap_squared) });
             let (minus, plus) = (quote! { slope - part }, quote! { slope + part });
             let (down, up) = if *upper { (minus, plus) } else { (plus, minus) };
@@ -303,7 +363,9 @@ fn inverses(fixed: &Fixed, x: &str, y: &str) -> Result<TokenStream> {
             continue;
         }
         let Branch { low, high, rising } = branch;
-        let about = doc(&format!("Count at which the formula comes nearest to `value`, on the stretch of the range {words}."));
+        let about = doc(&format!(
+            "Count at which the formula comes nearest to `value`, on the stretch of the range {words}."
+        ));
         let way = doc(&format!("There it {} from {low} to {high}.", if rising { "rises" } else { "falls" }));
         let (low, high) = (whole(low), whole(high));
         out.extend(quote! {
@@ -319,9 +381,14 @@ fn inverses(fixed: &Fixed, x: &str, y: &str) -> Result<TokenStream> {
         });
     }
     let halvings = Literal::u32_unsuffixed(fixed.control_bits);
-    let wide = if y == "i64" { quote! { value } } else { quote! { i64::from(value) } };
+    let wide = if y == "i64" {
+        quote! { value }
+    } else {
+        quote! { i64::from(value) }
+    };
     let at = |end: TokenStream| quote! { i64::from(self::value(#end)) };
-    let (first, last, at_low, at_high) = (at(quote! { bottom }), at(quote! { top }), at(quote! { low }), at(quote! { high }));
+    let (first, last, at_low, at_high) =
+        (at(quote! { bottom }), at(quote! { top }), at(quote! { low }), at(quote! { high }));
     // 32-bit counts may lie further apart than their own type holds.
     let middle = if x == "i32" {
         quote! { let middle = (i64::from(low) + i64::from(high)) >> 1; let middle = middle as i32; }
