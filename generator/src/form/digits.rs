@@ -74,7 +74,7 @@ mod tests {
     /// The places are counted by hand from the rule.
     #[test]
     fn digits_end_two_places_below_the_uncertainty() {
-        assert_eq!(format!("{}", written(1458.934_408_104_531_2, 1e-10)), "1458.934408104531");
+        assert_eq!(format!("{}", written(1_458.934_408_104_531_2, 1e-10)), "1458.934408104531");
         assert_eq!(written(-0.000_545_911_140_116_123_4, 1e-14), -0.000_545_911_140_116_1);
         // 3e-5 would leave 8 digits; 12 are kept.
         assert_eq!(written(1.234_567_890_123_456, 3e-5), 1.234_567_890_12);

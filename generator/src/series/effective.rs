@@ -43,6 +43,9 @@ pub(super) struct Effective<T: Scalar> {
     pub corrections: [Vec<State<T>>; 2],
 }
 
+/// The reduced resolvent at the energy of the state with this index.
+pub(super) type Resolve<'a, T> = dyn FnMut(usize, &State<T>) -> Result<State<T>> + 'a;
+
 /// A model space.
 pub(super) struct Space<'a, T: Scalar> {
     /// `H_0`, for residuals only.
@@ -64,7 +67,7 @@ pub(super) struct Space<'a, T: Scalar> {
 /// Those of `resolve`.
 pub(super) fn effective<T: Scalar>(
     space: &Space<'_, T>,
-    resolve: &mut dyn FnMut(usize, &State<T>) -> Result<State<T>>,
+    resolve: &mut Resolve<'_, T>,
 ) -> Result<Effective<T>> {
     let n_states = space.states.len();
     let order = space.unperturbed.order();
@@ -177,7 +180,7 @@ fn solve_once<T: Scalar>(
     space: &Space<'_, T>,
     j: usize,
     right: &State<T>,
-    resolve: &mut dyn FnMut(usize, &State<T>) -> Result<State<T>>,
+    resolve: &mut Resolve<'_, T>,
     residual: &mut f64,
 ) -> Result<State<T>> {
     if right.iter().all(|x| x.modulus_squared() == 0.0) {

@@ -14,10 +14,14 @@ use super::{AnyLevel, Level, share};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::model::{AnyModel, Built, HIGHEST_POWER, Model};
 use crate::outcome::Note;
-use crate::pencil::{Eigenpair, Hermitian, Scalar, State, lowest, reduced_solve};
+use crate::pencil::{Eigenpair, Hermitian, Scalar, State, lowest, reduced_solve, spectrum};
 
 /// Levels that the record lists.
 pub(super) const LISTED: usize = 12;
+
+/// Orders up to this have their whole spectrum computed, once: it serves as resolvent and
+/// makes the sum over states complete. Beyond, a few levels and solves cost less (empirical).
+const WHOLE: usize = 600;
 
 /// A gap above the degeneracy threshold, but below this many times it, decides
 /// nothing reliably and is refused.
@@ -185,9 +189,10 @@ impl<T: Scalar> Set<T> {
         }
         let matrix = model.expansion(0);
         let same = model.degeneracy_scale();
-        let mut count = LISTED.max(number.saturating_add(2)).min(order);
+        let whole = order <= WHOLE;
+        let mut count = if whole { order } else { LISTED.max(number.saturating_add(2)).min(order) };
         loop {
-            let pairs = lowest(matrix, count)?;
+            let pairs = if whole { spectrum(matrix)? } else { lowest(matrix, count)? };
             if pairs.len() < count {
                 return Err(Error::internal("fewer levels were found than the matrix has"));
             }
@@ -222,6 +227,33 @@ impl<T: Scalar> Set<T> {
         }
     }
 
+    /// The reduced resolvent at `energy` outside `states`: over the spectrum where all of
+    /// it is at hand, else by a solve.
+    pub(super) fn resolve(
+        &self,
+        matrix: &Hermitian<T>,
+        energy: f64,
+        states: &[State<T>],
+        right: &State<T>,
+    ) -> Result<State<T>> {
+        if self.lowest.len() < matrix.order() {
+            return reduced_solve(matrix, energy, states, right);
+        }
+        let mut out = State::zeros(right.len());
+        for pair in &self.lowest {
+            let inside = states.iter().fold(0.0, |sum, member| sum + member.dotc(&pair.state).modulus_squared());
+            if inside < 0.5 {
+                let amount = pair.state.dotc(right).unscale(pair.energy - energy);
+                out.axpy(amount, &pair.state, T::one());
+            }
+        }
+        for member in states {
+            let amount = member.dotc(&out);
+            out.axpy(-amount, member, T::one());
+        }
+        Ok(out)
+    }
+
     /// The effective series of the whole set.
     pub(super) fn series(&self, model: &dyn Model<T>) -> Result<Effective<T>> {
         let matrix = model.expansion(0);
@@ -233,7 +265,7 @@ impl<T: Scalar> Set<T> {
             reference: self.energy,
             states: &self.states,
         };
-        effective(&space, &mut |_, right| reduced_solve(matrix, self.energy, &self.states, right))
+        effective(&space, &mut |_, right| self.resolve(matrix, self.energy, &self.states, right))
     }
 }
 

@@ -18,7 +18,7 @@ use super::effective::{Effective, Space, effective};
 use super::level::{SAFETY, Set, branches, level};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::model::{AnyModel, Built, HIGHEST_POWER, Model};
-use crate::pencil::{Hermitian, Scalar, State, reduced_solve};
+use crate::pencil::{Hermitian, Scalar, State};
 
 /// A coupling below this part of the largest term is rounding.
 const COUPLED: f64 = 1e-10;
@@ -94,14 +94,14 @@ fn nearest<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, set: &Set<T>) -> 
     let distance = |idx: usize| (set.lowest[idx].energy - set.energy).abs();
     ranks.sort_by(|&a, &b| distance(a).total_cmp(&distance(b)).then(a.cmp(&b)));
     for idx in ranks {
-        let other = Set::find_any(model.as_ref(), idx + 1)?;
         let states = [set.states[0].clone(), set.lowest[idx].state.clone()];
-        let series = two(model.as_ref(), &states, [set.energy, other.energy])?;
+        let series = two(model.as_ref(), set, &states, [set.energy, set.lowest[idx].energy])?;
         let coupled = (1..=2).any(|power| {
             let terms = series.terms[power].max(series.series[power].camax());
             series.series[power][(0, 1)].modulus() > COUPLED * terms
         });
         if coupled {
+            let other = Set::find_any(model.as_ref(), idx + 1)?;
             return together(model, number, set, idx + 1, &other);
         }
     }
@@ -113,7 +113,12 @@ fn nearest<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, set: &Set<T>) -> 
 }
 
 /// Effective series of two eigenstates, reference in the middle.
-fn two<T: Scalar>(model: &dyn Model<T>, states: &[State<T>], energies: [f64; 2]) -> Result<Effective<T>> {
+fn two<T: Scalar>(
+    model: &dyn Model<T>,
+    set: &Set<T>,
+    states: &[State<T>],
+    energies: [f64; 2],
+) -> Result<Effective<T>> {
     let matrix = model.expansion(0);
     let powers: Vec<&Hermitian<T>> = (1..=HIGHEST_POWER).map(|power| model.expansion(power)).collect();
     let space = Space {
@@ -123,7 +128,7 @@ fn two<T: Scalar>(model: &dyn Model<T>, states: &[State<T>], energies: [f64; 2])
         reference: 0.5 * (energies[0] + energies[1]),
         states,
     };
-    effective(&space, &mut |j, right| reduced_solve(matrix, energies[j], states, right))
+    effective(&space, &mut |j, right| set.resolve(matrix, energies[j], states, right))
 }
 
 fn together<T: Scalar>(
@@ -140,7 +145,7 @@ fn together<T: Scalar>(
         Some(set.series(model.as_ref())?)
     } else if !same && set.states.len() == 1 && other.states.len() == 1 {
         let states = [set.states[0].clone(), other.states[0].clone()];
-        Some(two(model.as_ref(), &states, [set.energy, other.energy])?)
+        Some(two(model.as_ref(), set, &states, [set.energy, other.energy])?)
     } else {
         None
     };
@@ -182,7 +187,7 @@ fn together<T: Scalar>(
     // The energies of a degenerate pair are equal by decision, so only their mean is in doubt.
     let gap_doubt: Vec<f64> =
         (0..POWERS).map(|power| if power == 0 && same { 0.0 } else { doubt[power] }).collect();
-    for power in 0..POWERS {
+    for (power, own) in doubt.iter().enumerate() {
         let mut error = 0.0;
         for low in 0..=power {
             let high = power - low;
@@ -192,7 +197,7 @@ fn together<T: Scalar>(
             error += 2.0 * gap_doubt[low] * gap_doubt[high];
         }
         out.half_gap_squared_uncertainty[power] = SAFETY * error;
-        out.mean_uncertainty[power] = SAFETY * doubt[power];
+        out.mean_uncertainty[power] = SAFETY * own;
     }
     // A parity takes a pair that is a whole set, or two lone levels, to itself.
     if whole.is_some() && model.parity().is_some() {

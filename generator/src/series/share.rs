@@ -21,9 +21,6 @@ use crate::pencil::{Scalar, State, lowest};
 /// States beyond this many are not sought for their shares alone.
 const SOUGHT: usize = 400;
 
-/// Orders up to this have all states computed: it costs less than it tells.
-const WHOLE: usize = 64;
-
 /// Contributions end where the rest is below this part of the sum and no single one left out exceeds it.
 const CUT: f64 = 0.01;
 
@@ -78,8 +75,8 @@ pub(super) fn share<T: Scalar>(
         let left = (weight - met).max(4.0 * f64::EPSILON * weight);
         let tail = if whole { 0.0 } else { -left / (top - set.energy).max(f64::MIN_POSITIVE) };
         let settled = tail.abs() <= CUT * second.abs() || weight == 0.0;
-        if !whole && (order <= WHOLE || (!settled && count < SOUGHT)) {
-            count = if order <= WHOLE { order } else { (2 * count).min(order) };
+        if !whole && !settled && count < SOUGHT {
+            count = (2 * count).min(order);
             pairs = Some(lowest(model.expansion(0), count)?);
             continue;
         }

@@ -360,3 +360,15 @@ const SPLIT: [[[f64; 5]; 3]; 3] = [
         [0.0, 0.5, 0.26853643773324676, 0.05191691197123495, 0.009940697672860243],
     ],
 ];
+
+/// Beyond the order that is solved whole, closure encloses the part of the states that are not
+/// computed: the same well in 640 sine states. Source and tolerance as for the smaller one.
+#[test]
+fn a_large_basis_is_checked_by_closure() {
+    let level = level(&Trial::new(well(640)).even().shared(), 2).unwrap();
+    let pi = std::f64::consts::PI;
+    let expected = (4.0 * pi * pi - 15.0) / (24.0 * pi * pi * pi * pi * 16.0);
+    close(level.energies[2], expected, 1e-11, "E2");
+    assert!(level.uncertainty[2] < 1e-9 * expected, "{:e}", level.uncertainty[2]);
+    assert_eq!(level.levels.len(), 12);
+}
