@@ -241,7 +241,8 @@ impl<T: Scalar> Set<T> {
         }
         let mut out = State::zeros(right.len());
         for pair in &self.lowest {
-            let inside = states.iter().fold(0.0, |sum, member| sum + member.dotc(&pair.state).modulus_squared());
+            let inside =
+                states.iter().fold(0.0, |sum, member| sum + member.dotc(&pair.state).modulus_squared());
             if inside < 0.5 {
                 let amount = pair.state.dotc(right).unscale(pair.energy - energy);
                 out.axpy(amount, &pair.state, T::one());
