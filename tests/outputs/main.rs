@@ -2,4 +2,6 @@
 
 mod fixed;
 mod float;
+mod proofs;
 mod samples;
+mod target;
