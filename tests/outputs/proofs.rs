@@ -13,8 +13,21 @@ use crate::samples;
 fn undefined(scratch: &Scratch, probe: &str) -> (String, usize) {
     scratch.write("probe.rs", probe);
     let arguments = [
-        "--edition", "2021", "--crate-type", "lib", "--emit", "obj", "-C", "opt-level=s", "-C", "panic=abort", "-C",
-        "codegen-units=1", "probe.rs", "-o", "probe.o",
+        "--edition",
+        "2021",
+        "--crate-type",
+        "lib",
+        "--emit",
+        "obj",
+        "-C",
+        "opt-level=s",
+        "-C",
+        "panic=abort",
+        "-C",
+        "codegen-units=1",
+        "probe.rs",
+        "-o",
+        "probe.o",
     ];
     tool(scratch.path(), "rustc", &arguments);
     let list = |flag: &str| {
@@ -29,7 +42,9 @@ fn no_function_of_a_rust_file_can_panic() {
     let count = |bits, step| Count { bits, step, place: place.clone() };
     let counts = NumberFormat::Fixed { control: count(16, 0.01), value: count(32, 1e-3) };
     let outcome = samples::outcome("shapes", "F", 12.3, samples::every_shape(12.3));
-    for (format, x, y) in [(NumberFormat::F64, "f64", "f64"), (NumberFormat::F32, "f32", "f32"), (counts, "i16", "i32")] {
+    for (format, x, y) in
+        [(NumberFormat::F64, "f64", "f64"), (NumberFormat::F32, "f32", "f32"), (counts, "i16", "i32")]
+    {
         let stem = format!("shapes_{}", format.word());
         let scratch = Scratch::new(&format!("panic-{}", format.word()));
         let formulas = samples::in_format(&outcome, &format);
@@ -107,7 +122,8 @@ fn single_precision_that_the_level_dwarfs_is_refused_with_the_shift() {
     line.tolerance = 0.1;
     let outcome = samples::outcome("clock", "B", 0.0, vec![line.clone()]);
     let own = |_: f64| Ok(line.valid.clone());
-    let error = Formula::new(&line, &outcome.control, &NumberFormat::F32, None, &own).expect_err("too coarse");
+    let error =
+        Formula::new(&line, &outcome.control, &NumberFormat::F32, None, &own).expect_err("too coarse");
     assert!(error.diagnostics()[0].action.as_deref().is_some_and(|a| a.contains("value: shift")));
     line.form = samples::polynomial(&[0.0, 0.0, 4.0e3]);
     line.value = ValueKind::Shift;

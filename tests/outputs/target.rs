@@ -11,7 +11,8 @@ use shiftwright_tests::{Scratch, repository, text, tool};
 
 use crate::samples;
 
-const COMMON: &[&str] = &["-mthumb", "-std=c99", "-O2", "-ffreestanding", "-fno-builtin", "-ffunction-sections"];
+const COMMON: &[&str] =
+    &["-mthumb", "-std=c99", "-O2", "-ffreestanding", "-fno-builtin", "-ffunction-sections"];
 const M4F: &[&str] = &["-mcpu=cortex-m4", "-mfpu=fpv4-sp-d16", "-mfloat-abi=hard"];
 const M0: &[&str] = &["-mcpu=cortex-m0", "-mfloat-abi=soft"];
 
@@ -67,7 +68,9 @@ fn emulated_targets_give_the_bits_of_the_host() {
         form: single::Form::Polynomial(&c),
     };
     let Numbers::Fixed(n) = &whole[0].numbers else { panic!("counts") };
-    let shiftwright::formula::FixedForm::Polynomial { value, slope } = &n.form else { panic!("a polynomial") };
+    let shiftwright::formula::FixedForm::Polynomial { value, slope } = &n.form else {
+        panic!("a polynomial")
+    };
     let fixed = fixed::Formula {
         from: n.from,
         to: n.to,
@@ -114,20 +117,53 @@ fn emulated_targets_give_the_bits_of_the_host() {
             let small = format!("{stem}-{cpu}-small.o");
             let sized = [flags, COMMON, &["-Os", "-c", &source, "-o", &small]].concat();
             tool(path, "arm-none-eabi-gcc", &sized);
-            let row = (instructions(&scratch, &object, &format!("{stem}_onset")), code(&scratch, &object), code(&scratch, &small));
-            println!("{cpu} {stem}: value {} instructions, text {} bytes at -O2, {} at -Os", row.0, row.1, row.2);
+            let row = (
+                instructions(&scratch, &object, &format!("{stem}_onset")),
+                code(&scratch, &object),
+                code(&scratch, &small),
+            );
+            println!(
+                "{cpu} {stem}: value {} instructions, text {} bytes at -O2, {} at -Os",
+                row.0, row.1, row.2
+            );
             rows.push(row);
         }
-        let link = ["main.c", "startup.c", "shutter_f32.c", "shutter_fixed.c", "-nostartfiles", "-Wl,--gc-sections", "-T", "link.ld", "-o", "out.elf"];
+        let link = [
+            "main.c",
+            "startup.c",
+            "shutter_f32.c",
+            "shutter_fixed.c",
+            "-nostartfiles",
+            "-Wl,--gc-sections",
+            "-T",
+            "link.ld",
+            "-o",
+            "out.elf",
+        ];
         tool(path, "arm-none-eabi-gcc", &[flags, COMMON, &link].concat());
         let output = Command::new("timeout")
-            .args(["120", "qemu-system-arm", "-M", machine, "-nographic", "-monitor", "none", "-serial", "null"])
+            .args([
+                "120",
+                "qemu-system-arm",
+                "-M",
+                machine,
+                "-nographic",
+                "-monitor",
+                "none",
+                "-serial",
+                "null",
+            ])
             .args(["-semihosting-config", "enable=on,target=native", "-kernel", "out.elf"])
             .current_dir(path)
             .stdin(std::process::Stdio::null())
             .output()
             .expect("the emulator starts");
-        assert_eq!(output.status.code(), Some(0), "{cpu}: 1 is single precision, 2 fixed point: {}", text(&output));
+        assert_eq!(
+            output.status.code(),
+            Some(0),
+            "{cpu}: 1 is single precision, 2 fixed point: {}",
+            text(&output)
+        );
     }
     assert!(rows[0].0 <= 12, "single precision on M4F");
     assert!(rows[3].0 <= 60, "fixed point on M0");
