@@ -5,7 +5,7 @@ use std::path::{Path, PathBuf};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::emit::Source;
 use crate::outcome::{Outcome, Picture};
-use crate::spec::Spec;
+use crate::spec::{Document, Loader, Spec};
 
 use super::files;
 
@@ -73,8 +73,24 @@ pub fn load(path: &Path) -> Result<Loaded> {
 ///
 /// # Errors
 /// The spec's mistakes; the system's refusal of a file that it names.
-pub fn read(_path: &Path, _bytes: &[u8]) -> Result<Loaded> {
-    Err(Error::internal("this build holds no reader of specs yet"))
+pub fn read(path: &Path, bytes: &[u8]) -> Result<Loaded> {
+    let folder = path.parent().map(Path::to_owned).unwrap_or_default();
+    let spec = Document::parse(&path.display().to_string(), bytes, &Beside(folder))?.resolve(&[])?;
+    let text = String::from_utf8_lossy(bytes).into_owned();
+    Ok(Loaded { spec, text, path: path.to_owned() })
+}
+
+/// Files in the folder of the spec.
+struct Beside(PathBuf);
+
+impl Loader for Beside {
+    fn load(&self, path: &str) -> std::result::Result<Vec<u8>, String> {
+        match files::read(&self.0.join(path)) {
+            Ok(Some(bytes)) => Ok(bytes),
+            Ok(None) => Err("there is no such file".to_owned()),
+            Err(error) => Err(error.to_string()),
+        }
+    }
 }
 
 /// Solves a spec and emits its files.

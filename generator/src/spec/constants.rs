@@ -49,6 +49,9 @@ pub fn read(scope: &mut Scope<'_>, constants: &Named<Scalar>, overrides: &[(Stri
     }
     let mut failed: Vec<&str> = Vec::new();
     while let Some(name) = ready.pop_front() {
+        if scope.full() {
+            break;
+        }
         let Some(scalar) = all.get(name) else { continue };
         let constant = one(scope, name, scalar);
         match constant {

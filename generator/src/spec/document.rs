@@ -157,7 +157,7 @@ impl Document {
         super::constants::read(&mut scope, &raw.constants, overrides);
         let control = control(&mut scope, &raw.control);
         let family: Vec<FamilyParameter> =
-            raw.family.0.iter().filter_map(|(name, range)| family(&scope, name, range)).collect();
+            raw.family.0.iter().take(4).filter_map(|(name, range)| family(&scope, name, range)).collect();
         if raw.family.0.len() > 3 {
             scope.problem(
                 scope
@@ -172,6 +172,9 @@ impl Document {
         let sound = control.is_some() && scope.problems() == 0;
         if sound {
             for (name, raw) in &raw.systems.0 {
+                if scope.full() {
+                    break;
+                }
                 let path = format!("systems.{name}");
                 let place = scope.key_place(&path);
                 scope.name(&path, name, false, place.clone());
@@ -187,6 +190,9 @@ impl Document {
         let mut all = Vec::new();
         if sound && systems.len() == raw.systems.0.len() {
             for (name, raw) in &raw.formulas.0 {
+                if scope.full() {
+                    break;
+                }
                 let path = format!("formulas.{name}");
                 if scope.name(&path, name, true, scope.key_place(&path)) {
                     all.extend(formulas::formula(&scope, &systems, !family.is_empty(), name, raw));

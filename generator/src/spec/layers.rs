@@ -129,6 +129,14 @@ impl Stack<'_> {
                 _ => self.repeat(&path, layer, out).is_some(),
             };
             if out.len() > MOST_LAYERS {
+                self.scope.problem(
+                    self.scope
+                        .wrong("too-many-layers", &path, "the stack has too many layers")
+                        .expected(format!("at most {MOST_LAYERS}, repeats written out")),
+                );
+                return None;
+            }
+            if self.scope.full() {
                 return None;
             }
         }

@@ -44,18 +44,13 @@ pub fn matrix(scope: &Scope<'_>, files: &Files, path: &str, raw: &raw::System) -
             raw::Matrix::Rows(rows) => inline(scope, &path, rows, &element_unit(scope, &unit, power)),
             raw::Matrix::File(name) => file(scope, files, &path, &name.0),
         };
-        let Some(grid) = grid else {
-            good = false;
-            continue;
-        };
+        // What follows is measured by the first matrix, so the first mistake ends it.
+        let grid = grid?;
         let place = match matrix {
             raw::Matrix::Rows(_) => scope.key_place(&path),
             raw::Matrix::File(_) => scope.place(&format!("{path}.file")),
         };
-        let Some(checked) = square(scope, &path, grid, h.first().map(DMatrix::nrows)) else {
-            good = false;
-            continue;
-        };
+        let checked = square(scope, &path, grid, h.first().map(DMatrix::nrows))?;
         good &= hermitian(scope, &path, &checked, &unit);
         h.push(checked);
         places.push(place);

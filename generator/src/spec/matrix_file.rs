@@ -210,13 +210,11 @@ impl Reader<'_> {
             if !put(i, j, value) {
                 return Err(wrong("this element stands twice, or beyond the matrix"));
             }
-            match mirror {
-                Some(mirror) if i != j => {
-                    if !put(j, i, mirror(value)) {
-                        return Err(wrong("this element and its mirror image both stand here"));
-                    }
-                }
-                _ => {}
+            if let Some(mirror) = mirror
+                && i != j
+                && !put(j, i, mirror(value))
+            {
+                return Err(wrong("this element and its mirror image both stand here"));
             }
             count += 1;
             i += 1;

@@ -95,6 +95,11 @@ impl<'a> Scope<'a> {
         }
     }
 
+    /// True if no more messages are taken, so that looking for more is idle.
+    pub fn full(&self) -> bool {
+        self.problems() >= MOST
+    }
+
     pub fn problems(&self) -> usize {
         self.problems.borrow().len()
     }

@@ -8,6 +8,9 @@ use super::tree::{Node, NodeKind, Text, short};
 use crate::diagnostic::Diagnostic;
 use crate::units::nearest;
 
+/// Most messages that are told at once.
+const MOST: usize = 50;
+
 /// Form of a value.
 pub enum Shape {
     /// Text or number, not empty.
@@ -227,7 +230,7 @@ pub static MATERIALS: Shape = Map(&[
     may("alloys", Names(&ALLOY_OF)),
 ]);
 
-/// All mistakes of structure, in order of their places; at most about a hundred.
+/// All mistakes of structure, in order of their places; at most about fifty.
 pub fn check(text: &Text, shape: &Shape) -> Vec<Diagnostic> {
     let mut out = Vec::new();
     visit(text, &text.root, shape, &mut out);
@@ -249,7 +252,7 @@ impl Shape {
         match (self, &node.kind) {
             (Scalar, NodeKind::Scalar { .. })
             | (List(_), NodeKind::List(_))
-            | (Map(_) | Names(_) | Kinds(_), NodeKind::Map(_)) => true,
+            | (Map(_) | Names(_) | Kinds(_), NodeKind::Map { .. }) => true,
             (Either(shapes), _) => shapes.iter().any(|shape| shape.fits(node)),
             _ => false,
         }
@@ -257,7 +260,7 @@ impl Shape {
 }
 
 fn visit(text: &Text, node: &Node, shape: &Shape, out: &mut Vec<Diagnostic>) {
-    if out.len() > 100 {
+    if out.len() > MOST {
         return;
     }
     let shape = match shape {
@@ -274,11 +277,11 @@ fn visit(text: &Text, node: &Node, shape: &Shape, out: &mut Vec<Diagnostic>) {
     match (shape, &node.kind) {
         (Scalar, NodeKind::Scalar { text: value, plain }) => scalar(text, node, value, *plain, out),
         (List(item), NodeKind::List(items)) => items.iter().for_each(|node| visit(text, node, item, out)),
-        (Names(value), NodeKind::Map(keys)) => {
+        (Names(value), NodeKind::Map { keys, .. }) => {
             keys.iter().for_each(|key| visit(text, &key.value, value, out));
         }
-        (Map(fields), NodeKind::Map(_)) => fields_of(text, node, fields, out),
-        (Kinds(kinds), NodeKind::Map(_)) => {
+        (Map(fields), NodeKind::Map { .. }) => fields_of(text, node, fields, out),
+        (Kinds(kinds), NodeKind::Map { .. }) => {
             let kind = node.get("kind");
             match kind.and_then(Node::text).and_then(|word| kinds.iter().find(|(name, _)| *name == word)) {
                 Some((_, fields)) => fields_of(text, node, fields, out),
@@ -309,7 +312,7 @@ fn wrong(text: &Text, node: &Node, expected: &str) -> Diagnostic {
         NodeKind::Scalar { text, .. } if text.is_empty() => "nothing".to_owned(),
         NodeKind::Scalar { text, .. } => format!("`{}`", short(text)),
         NodeKind::List(_) => "a list".to_owned(),
-        NodeKind::Map(_) => "a mapping".to_owned(),
+        NodeKind::Map { .. } => "a mapping".to_owned(),
     };
     Diagnostic::new("wrong-form", "the value has the wrong form")
         .at(Some(text.place(first_line(text, node))))
@@ -353,6 +356,9 @@ fn scalar(text: &Text, node: &Node, value: &str, plain: bool, out: &mut Vec<Diag
 fn fields_of(text: &Text, node: &Node, fields: &'static [Field], out: &mut Vec<Diagnostic>) {
     let names: Vec<&str> = fields.iter().map(|field| field.name).collect();
     for key in node.keys() {
+        if out.len() > MOST {
+            return;
+        }
         match fields.iter().find(|field| field.name == key.text) {
             Some(field) => visit(text, &key.value, &field.shape, out),
             None => {

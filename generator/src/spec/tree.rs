@@ -35,7 +35,11 @@ pub enum NodeKind {
         plain: bool,
     },
     List(Vec<Node>),
-    Map(Vec<Key>),
+    /// Keys in the order of the file; `index` finds them by their text.
+    Map {
+        keys: Vec<Key>,
+        index: BTreeMap<String, usize>,
+    },
 }
 
 /// A key with its value.
@@ -49,12 +53,17 @@ pub struct Key {
 impl Node {
     /// The keys of a mapping; none of anything else.
     pub fn keys(&self) -> &[Key] {
-        if let NodeKind::Map(keys) = &self.kind { keys } else { &[] }
+        if let NodeKind::Map { keys, .. } = &self.kind { keys } else { &[] }
     }
 
     /// The value under a key.
     pub fn get(&self, key: &str) -> Option<&Node> {
-        self.keys().iter().find(|one| one.text == key).map(|one| &one.value)
+        self.key(key).map(|one| &one.value)
+    }
+
+    fn key(&self, key: &str) -> Option<&Key> {
+        let NodeKind::Map { keys, index } = &self.kind else { return None };
+        keys.get(*index.get(key)?)
     }
 
     /// The items of a list; none of anything else.
@@ -80,7 +89,7 @@ impl Node {
     /// The stretch of a key at a path.
     pub fn find_key(&self, path: &str) -> Option<Range<usize>> {
         let (parent, last) = path.rsplit_once('.').unwrap_or(("", path));
-        self.find(parent)?.keys().iter().find(|key| key.text == last).map(|key| key.span.clone())
+        self.find(parent)?.key(last).map(|key| key.span.clone())
     }
 }
 
@@ -159,8 +168,8 @@ struct Open {
     items: Vec<Node>,
     /// A key that waits for its value.
     key: Option<(String, Range<usize>)>,
-    /// Where each key stands.
-    seen: BTreeMap<String, Range<usize>>,
+    /// Number of each key.
+    seen: BTreeMap<String, usize>,
 }
 
 /// Counts in bytes what the parser counts in characters.
@@ -287,7 +296,7 @@ impl Builder<'_> {
                         _ => None,
                     };
                     let kind = match open.keys {
-                        Some(keys) => NodeKind::Map(keys),
+                        Some(keys) => NodeKind::Map { keys, index: open.seen },
                         None => NodeKind::List(open.items),
                     };
                     Node { span: open.start..end.unwrap_or(span.end).max(open.start), kind }
@@ -336,7 +345,7 @@ impl Builder<'_> {
         match (&mut open.keys, open.key.take()) {
             (None, _) => open.items.push(node),
             (Some(keys), Some((text, span))) => keys.push(Key { text, span, value: node }),
-            (Some(_), None) => {
+            (Some(keys), None) => {
                 let NodeKind::Scalar { text, .. } = node.kind else {
                     return Err(Error::spec(
                         self.fault("key", node.span, "a list or mapping cannot be a key").expected("a word"),
@@ -360,7 +369,7 @@ impl Builder<'_> {
                         self.found.push(fault);
                     }
                 } else {
-                    open.seen.insert(text.clone(), node.span.clone());
+                    open.seen.insert(text.clone(), keys.len());
                 }
                 open.key = Some((text, node.span));
             }
