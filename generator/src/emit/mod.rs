@@ -6,8 +6,11 @@ pub mod record;
 
 pub mod c;
 pub mod header;
+mod output;
 pub mod rust;
 pub mod text;
+
+pub use output::outputs;
 
 use shiftwright_runtime::double::Branch;
 
