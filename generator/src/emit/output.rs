@@ -81,8 +81,9 @@ fn in_format(
             Number::F32 => NumberFormat::F32,
             Number::Fixed => {
                 let counts = counts.and_then(|c| Some((c.control.clone(), c.values.get(position)?.clone())));
-                let (control, value) = counts
-                    .ok_or_else(|| Error::internal("a fixed-point output reached the printer without its counts"))?;
+                let (control, value) = counts.ok_or_else(|| {
+                    Error::internal("a fixed-point output reached the printer without its counts")
+                })?;
                 NumberFormat::Fixed { control, value }
             }
         };
