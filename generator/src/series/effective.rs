@@ -88,18 +88,18 @@ pub(super) fn effective<T: Scalar>(
     // images[b][c - 1][j] = H_c u_b[j]; an empty list stands for zeros.
     let mut images: Vec<Vec<Vec<State<T>>>> = Vec::with_capacity(3);
     images.push((1..COEFFICIENTS).map(|power| apply(power, space.states)).collect());
-    let mut residual = [0.0_f64; 3];
-    let mut norm = [1.0_f64, 0.0, 0.0];
-    for (state, &energy) in space.states.iter().zip(space.energies) {
-        residual[0] = residual[0].max(miss(space.unperturbed, energy, state, &State::zeros(order)));
+    let mut errors = Errors::default();
+    for (j, state) in space.states.iter().enumerate() {
+        let rest = space.rest(j, state, None);
+        errors.state[0] = errors.state[0].max(resolve(j, &rest)?.norm());
     }
     let mut rights: [Vec<State<T>>; 2] = [Vec::new(), Vec::new()];
     let mut corrections: [Vec<State<T>>; 2] = [Vec::new(), Vec::new()];
     for j in 0..n_states {
         let mut right = -get(&images[0][0], j);
         project(&mut right);
-        let first = solve_once(space, j, &right, resolve, &mut residual[1])?;
-        norm[1] = norm[1].max(first.norm());
+        let first = solve_once(space, j, &right, resolve, &mut errors.state[1])?;
+        errors.take(1, &first, &right);
         rights[0].push(right);
         corrections[0].push(first);
     }
@@ -112,8 +112,8 @@ pub(super) fn effective<T: Scalar>(
             right.axpy(inner(state, &image), &corrections[0][i], T::one());
         }
         project(&mut right);
-        let second = solve_once(space, j, &right, resolve, &mut residual[2])?;
-        norm[2] = norm[2].max(second.norm());
+        let second = solve_once(space, j, &right, resolve, &mut errors.state[2])?;
+        errors.take(2, &second, &right);
         rights[1].push(right);
         corrections[1].push(second);
     }
@@ -171,39 +171,43 @@ pub(super) fn effective<T: Scalar>(
             terms[power] = terms[power].max(series[low].camax() * norms[power - low].camax());
         }
     }
-    Ok(Effective { doubt: doubt(&residual, &norm, &rounding, &terms), series, terms, corrections })
+    Ok(Effective { doubt: errors.doubt(&rounding, &terms), series, terms, corrections })
 }
 
-/// One reduced-resolvent solve with one step of refinement; `residual` keeps
-/// the largest norm of what is left.
+impl<T: Scalar> Space<'_, T> {
+    /// `(H_0 - e_j) state - right` outside the model space.
+    fn rest(&self, j: usize, state: &State<T>, right: Option<&State<T>>) -> State<T> {
+        let mut rest = self.unperturbed.apply(state);
+        rest.axpy(T::from_real(-self.energies[j]), state, T::one());
+        if let Some(right) = right {
+            rest -= right;
+        }
+        for member in self.states {
+            let amount = member.dotc(&rest);
+            rest.axpy(-amount, member, T::one());
+        }
+        rest
+    }
+}
+
+/// One reduced-resolvent solve with one step of refinement. `error` keeps the
+/// largest correction of that step: what is left after it is rounding of the
+/// same size at most.
 fn solve_once<T: Scalar>(
     space: &Space<'_, T>,
     j: usize,
     right: &State<T>,
     resolve: &mut Resolve<'_, T>,
-    residual: &mut f64,
+    error: &mut f64,
 ) -> Result<State<T>> {
     if right.iter().all(|x| x.modulus_squared() == 0.0) {
         return Ok(State::zeros(right.len()));
     }
     let mut out = resolve(j, right)?;
-    let mut rest = space.unperturbed.apply(&out);
-    rest.axpy(T::from_real(-space.energies[j]), &out, T::one());
-    rest -= right;
-    for member in space.states {
-        let amount = member.dotc(&rest);
-        rest.axpy(-amount, member, T::one());
-    }
-    out -= resolve(j, &rest)?;
-    *residual = residual.max(miss(space.unperturbed, space.energies[j], &out, right));
+    let correction = resolve(j, &space.rest(j, &out, Some(right)))?;
+    *error = error.max(correction.norm());
+    out -= correction;
     Ok(out)
-}
-
-/// Norm of `(H - energy) state - right`.
-fn miss<T: Scalar>(matrix: &Hermitian<T>, energy: f64, state: &State<T>, right: &State<T>) -> f64 {
-    let mut rest = matrix.apply(state);
-    rest.axpy(T::from_real(-energy), state, T::one());
-    (rest - right).norm()
 }
 
 /// `N^(-1/2) A N^(-1/2)` as a series, `N_0 = 1`, made Hermitian to the last bit.
@@ -243,22 +247,40 @@ fn canonical<T: Scalar>(
     out
 }
 
-/// Error of each coefficient, to first order in the residuals `r_j` of the
-/// states of order `j`: `sum_j 2 |w_(k-j)| |r_j|`, with the norms of orders 3 to 5
-/// continued geometrically, and a few units of rounding of what was summed.
-fn doubt(residual: &[f64; 3], norm: &[f64; 3], rounding: &[f64; 6], terms: &[f64; 6]) -> [f64; 6] {
-    let ratio = if norm[1] > 0.0 { (norm[2] / norm[1]).max(norm[1]) } else { 0.0 };
-    let mut norms = [1.0, norm[1], norm[2], 0.0, 0.0, 0.0];
-    for power in 3..COEFFICIENTS {
-        norms[power] = norms[power - 1] * ratio;
+/// Estimated errors of the states of order 0, 1 and 2, with norms of the states
+/// and of the right-hand sides that they answer.
+#[derive(Default)]
+struct Errors {
+    state: [f64; 3],
+    norm: [f64; 3],
+    right: [f64; 3],
+}
+
+impl Errors {
+    fn take<T: Scalar>(&mut self, order: usize, state: &State<T>, right: &State<T>) {
+        self.norm[order] = self.norm[order].max(state.norm());
+        self.right[order] = self.right[order].max(right.norm());
     }
-    let mut out = [0.0; COEFFICIENTS];
-    for power in 1..COEFFICIENTS {
-        let mut sum = 4.0 * f64::EPSILON * rounding[power].max(terms[power]);
-        for (j, &rest) in residual.iter().enumerate().filter(|(j, _)| *j < power) {
-            sum += 2.0 * rest * norms[power - j];
+
+    /// Error of each coefficient, to first order in the errors of the states of
+    /// order `j`: `sum_j 2 |state error_j| |right_(k-j)|`, the right-hand sides of orders 3
+    /// to 5 continued geometrically, and a few units of rounding of what was
+    /// summed.
+    fn doubt(&self, rounding: &[f64; COEFFICIENTS], terms: &[f64; COEFFICIENTS]) -> [f64; COEFFICIENTS] {
+        let ratio =
+            if self.norm[1] > 0.0 { (self.norm[2] / self.norm[1]).max(self.norm[1]) } else { 0.0 };
+        let mut rights = [0.0, self.right[1], self.right[2], 0.0, 0.0, 0.0];
+        for power in 3..COEFFICIENTS {
+            rights[power] = rights[power - 1] * ratio;
         }
-        out[power] = sum;
+        let mut out = [0.0; COEFFICIENTS];
+        for power in 1..COEFFICIENTS {
+            let mut sum = 4.0 * f64::EPSILON * rounding[power].max(terms[power]);
+            for (j, error) in self.state.iter().enumerate().filter(|(j, _)| *j < power) {
+                sum += 2.0 * error * rights[power - j];
+            }
+            out[power] = sum;
+        }
+        out
     }
-    out
 }

@@ -8,7 +8,7 @@
 use std::rc::Rc;
 
 use super::effective::{COEFFICIENTS, Effective, Space, effective};
-use super::product::inner;
+use super::product::{bulk, inner};
 use super::reduce::{Branch, EQUAL, reduce};
 use super::{AnyLevel, Level, share};
 use crate::diagnostic::{Diagnostic, Error, Result};
@@ -97,6 +97,10 @@ pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level
             energies[power] = 0.0;
             doubt[power] = 0.0;
         }
+    }
+    if (1..=HIGHEST_POWER).all(|power| model.expansion(power).is_zero()) {
+        // Orders up to the highest power of the expansion; a fifth power is not known here.
+        zero[1..=HIGHEST_POWER].fill(Some("the control does not act on this system".into()));
     }
     let direct = inner(&state, &model.expansion(2).apply(&state)).real();
     let shared = share::share(model.as_ref(), &found, &state, energies[2], direct)?;
@@ -218,6 +222,7 @@ impl<T: Scalar> Set<T> {
             let gap = below.into_iter().chain(above).fold(f64::INFINITY, f64::min);
             for (state, e) in states.iter().zip(&found) {
                 let mut rest = matrix.apply(state);
+                energy_doubt = energy_doubt.max(2.0 * f64::EPSILON * bulk(state, &rest));
                 rest.axpy(T::from_real(-energy), state, T::one());
                 energy_doubt = energy_doubt
                     .max((e - energy).abs())

@@ -19,6 +19,8 @@ mod product;
 mod reduce;
 mod share;
 #[cfg(test)]
+mod published;
+#[cfg(test)]
 mod trial;
 
 use std::rc::Rc;
