@@ -267,8 +267,7 @@ impl Errors {
     /// to 5 continued geometrically, and a few units of rounding of what was
     /// summed.
     fn doubt(&self, rounding: &[f64; COEFFICIENTS], terms: &[f64; COEFFICIENTS]) -> [f64; COEFFICIENTS] {
-        let ratio =
-            if self.norm[1] > 0.0 { (self.norm[2] / self.norm[1]).max(self.norm[1]) } else { 0.0 };
+        let ratio = if self.norm[1] > 0.0 { (self.norm[2] / self.norm[1]).max(self.norm[1]) } else { 0.0 };
         let mut rights = [0.0, self.right[1], self.right[2], 0.0, 0.0, 0.0];
         for power in 3..COEFFICIENTS {
             rights[power] = rights[power - 1] * ratio;

@@ -16,10 +16,10 @@ mod level;
 mod overlap;
 mod pair;
 mod product;
-mod reduce;
-mod share;
 #[cfg(test)]
 mod published;
+mod reduce;
+mod share;
 #[cfg(test)]
 mod trial;
 
