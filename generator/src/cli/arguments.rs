@@ -139,6 +139,9 @@ pub enum Command {
         /// File to write; standard output if left out
         file: Option<PathBuf>,
     },
+    /// Print the JSON Schema of the spec language, for editors
+    #[command(after_help = "Example:\n  shiftwright schema > shiftwright.schema.json")]
+    Schema,
     /// Print a completion script for a shell
     #[command(after_help = "Example:\n  shiftwright completions bash > shiftwright.bash")]
     Completions {

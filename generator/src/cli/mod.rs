@@ -54,6 +54,7 @@ fn run(command: &Command) -> Ended {
         Command::Compare { old, new, json } => compare::compare(old, new, *json),
         Command::Explain { spec, json } => explain::explain(spec, *json),
         Command::New { kind, file } => starter::new(*kind, file.as_deref()),
+        Command::Schema => print::json(&crate::spec::schema()),
         Command::Completions { shell } => {
             let mut text = Vec::new();
             clap_complete::generate(*shell, &mut Arguments::command(), "shiftwright", &mut text);

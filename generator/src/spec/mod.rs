@@ -18,6 +18,7 @@ mod operators;
 mod outputs;
 mod parts;
 mod raw;
+mod schema;
 mod scope;
 mod shape;
 mod tree;
@@ -29,6 +30,7 @@ mod tests;
 pub use document::{Document, Files, Loaded, Loader, NoFiles, sha256};
 pub use materials::SHIPPED as SHIPPED_MATERIALS;
 pub use matrix_file::{Grid, read as read_matrix};
+pub use schema::schema;
 
 use nalgebra::DMatrix;
 

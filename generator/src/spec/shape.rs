@@ -29,9 +29,9 @@ pub enum Shape {
 
 /// A key that may stand in a mapping.
 pub struct Field {
-    name: &'static str,
-    required: bool,
-    shape: Shape,
+    pub name: &'static str,
+    pub required: bool,
+    pub shape: Shape,
 }
 
 const fn need(name: &'static str, shape: Shape) -> Field {
@@ -49,7 +49,8 @@ static SCALAR: Shape = Scalar;
 static PROFILE: [Shape; 2] = [Scalar, Map(&GRADE)];
 static ALLOY: [Field; 2] = [need("alloy", Scalar), need("x", Either(&PROFILE))];
 static MATERIAL: [Shape; 2] = [Scalar, Map(&ALLOY)];
-static LAYER: Shape = Map(&[
+/// A layer or a repeat; it holds itself.
+pub static LAYER: Shape = Map(&[
     may("name", Scalar),
     may("thickness", Scalar),
     may("edge", Either(&PROFILE)),
