@@ -135,11 +135,12 @@ macro_rules! format {
                         Form::Paired { mean, half_gap_squared, upper } => {
                             let slope = horner_slope(mean, d);
                             let half_gap = root(horner(half_gap_squared, d));
-                            if !(half_gap > 0.0) {
-                                return slope;
+                            if half_gap > 0.0 {
+                                let part = horner_slope(half_gap_squared, d) / (2.0 * half_gap);
+                                if upper { slope + part } else { slope - part }
+                            } else {
+                                slope
                             }
-                            let part = horner_slope(half_gap_squared, d) / (2.0 * half_gap);
-                            if upper { slope + part } else { slope - part }
                         }
                     }
                 }

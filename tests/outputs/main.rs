@@ -5,3 +5,4 @@ mod float;
 mod proofs;
 mod samples;
 mod target;
+mod vectors;

@@ -8,9 +8,11 @@ pub mod c;
 pub mod header;
 mod output;
 pub mod rust;
+mod self_check;
 pub mod text;
 
-pub use output::outputs;
+pub use output::{Circuit, outputs};
+pub use self_check::self_check;
 
 use shiftwright_runtime::double::Branch;
 

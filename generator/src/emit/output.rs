@@ -7,6 +7,9 @@ use crate::formula::{Formula, NumberFormat};
 use crate::outcome::{Outcome, OutputFormula, OutputOutcome, Valid};
 use crate::spec::{self, Language, Number, Output, OutputCounts, Spec};
 
+/// Prints an output of a circuit language, with its entries in the record.
+pub type Circuit<'a> = &'a dyn Fn(&Outcome, &Output) -> Result<(Source, Vec<OutputFormula>)>;
+
 /// Emits every output of a spec in order and enters it into `outcome.outputs`.
 ///
 /// - `own_range`: position of the formula and a rounding bound in its unit; gives the
@@ -19,7 +22,7 @@ pub fn outputs(
     spec: &Spec,
     outcome: &mut Outcome,
     own_range: &dyn Fn(usize, f64) -> Result<Valid>,
-    circuit: &dyn Fn(&Outcome, &Output) -> Result<(Source, Vec<OutputFormula>)>,
+    circuit: Circuit<'_>,
 ) -> Result<Vec<Source>> {
     let mut sources = Vec::new();
     let mut entries = Vec::new();
