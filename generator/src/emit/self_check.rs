@@ -171,7 +171,7 @@ fn rust(body: &mut String, stem: &str, name: &str, v: &Vectors) {
     let list: Vec<String> = v.rows.iter().map(|[a, b, c]| format!("({a}, {b}, {c})")).collect();
     let work = if v.whole { "i64" } else { y };
     let wide = if v.whole { "i64::from(value)" } else { "value" };
-    let _ = write!(body, "    let vectors: [({x}, {work}, {work}); {}] = [\n", list.len());
+    let _ = writeln!(body, "    let vectors: [({x}, {work}, {work}); {}] = [", list.len());
     for row in &list {
         let _ = writeln!(body, "        {row},");
     }
