@@ -7,9 +7,17 @@
 //!
 //! Method: the exact level is followed outwards by isolation discs; on each
 //! piece it is interpolated at Chebyshev points with a bounded error; ends are
-//! polished with exact solves. Crossings are met where the discs shrink.
+//! found on the interpolants by proven bounds. Where the discs shrink to nothing
+//! levels meet: the walk ends there, and no range is stated beyond it.
 //!
 //! Not here: languages, number formats.
+
+mod follow;
+mod measure;
+#[cfg(test)]
+mod toy;
+
+pub use measure::{Followed, follow};
 
 use crate::form::Form;
 use crate::outcome::Note;
@@ -25,39 +33,33 @@ pub struct Term<'a> {
     pub level: &'a AnyLevel,
 }
 
-/// The exact quantity that a formula stands for.
-pub enum Quantity<'a> {
-    /// A sum of levels and of a smooth known function.
-    Sum {
-        /// The levels.
-        terms: Vec<Term<'a>>,
-        /// Constants and expressions of the sum, as change from the operating
-        /// point; takes the control, gives the formula's unit.
-        known_change: &'a dyn Fn(f64) -> f64,
-        /// Their value at the operating point.
-        known: f64,
-    },
-    /// The squared overlap of two envelopes.
-    Overlap(Term<'a>, Term<'a>),
-}
-
-/// What is to be measured.
+/// What is to be followed.
 pub struct Request<'a> {
     /// Operating point.
     pub at: f64,
     /// Wanted interval, `from <= at <= to`.
     pub within: (f64, f64),
-    /// Exact quantity.
-    pub quantity: Quantity<'a>,
-    /// True if the formula gives the change from the operating point.
-    pub shift: bool,
+    /// The levels of the sum.
+    pub terms: Vec<Term<'a>>,
+    /// Constants and expressions of the sum, as change from the operating
+    /// point; takes the control, gives the formula's unit, NaN where undefined.
+    pub known_change: &'a dyn Fn(f64) -> f64,
+    /// The whole quantity at the operating point; 0 if the formula gives the
+    /// change from there.
+    pub base: f64,
     /// Largest error allowed, formula's unit.
     pub tolerance: f64,
-    /// Numerical error of the exact level and of the coefficients at an offset d, formula's unit.
+}
+
+/// What belongs to one form in one number format.
+pub struct Candidate<'a> {
+    /// The form.
+    pub form: &'a Form,
+    /// Numerical error of the exact quantity at an offset d, formula's unit.
     pub numerical: &'a dyn Fn(f64) -> f64,
-    /// Error of the written digits at an offset d, formula's unit, for the form in question.
+    /// Error of the written digits at an offset d, formula's unit.
     pub written: &'a dyn Fn(f64) -> f64,
-    /// A number format's own rounding bound, added to the sum; 0 for the formula itself.
+    /// The number format's own rounding bound; 0 for the formula itself.
     pub rounding: f64,
 }
 

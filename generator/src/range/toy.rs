@@ -1,0 +1,153 @@
+//! Closed-form systems against which ranges are held.
+
+use std::rc::Rc;
+
+use nalgebra::DMatrix;
+
+use super::{Candidate, Limit, Ranged, Request, Term, follow};
+use crate::diagnostic::Result;
+use crate::form::Form;
+use crate::model::{HIGHEST_POWER, Model};
+use crate::pencil::{Hermitian, State};
+use crate::series::{AnyLevel, level};
+
+/// `h0 + x h1`, operating point 0, with an edge that may fall with `x`.
+struct Linear {
+    powers: Vec<Hermitian<f64>>,
+    edge: Option<(f64, f64)>,
+}
+
+impl Linear {
+    fn at(&self, weights: [f64; 2]) -> Hermitian<f64> {
+        let sum = self.powers[0].to_dense() * weights[0] + self.powers[1].to_dense() * weights[1];
+        Hermitian::Dense(sum)
+    }
+}
+
+impl Model<f64> for Linear {
+    fn order(&self) -> usize {
+        self.powers[0].order()
+    }
+    fn at(&self) -> f64 {
+        0.0
+    }
+    fn expansion(&self, power: usize) -> &Hermitian<f64> {
+        &self.powers[power]
+    }
+    fn hamiltonian(&self, x: f64) -> Hermitian<f64> {
+        self.at([1.0, x])
+    }
+    fn change(&self, x: f64) -> Hermitian<f64> {
+        self.at([0.0, x])
+    }
+    fn slope(&self, _: f64) -> Hermitian<f64> {
+        self.at([0.0, 1.0])
+    }
+    fn rates(&self, _: f64) -> [f64; HIGHEST_POWER] {
+        [self.powers[1].half_spread(), 0.0, 0.0, 0.0]
+    }
+    fn escape_edge(&self, x: f64) -> Option<f64> {
+        self.edge.map(|(height, slope)| height - slope * x.abs())
+    }
+    fn degeneracy_scale(&self) -> f64 {
+        1e-12
+    }
+    fn energy(&self, x: f64, state: &State<f64>) -> f64 {
+        self.hamiltonian(x).element(state, state) / state.norm_squared()
+    }
+}
+
+fn solved(h0: &[f64], h1: &[f64], number: usize, edge: Option<(f64, f64)>) -> AnyLevel {
+    let n = h0.len().isqrt();
+    let dense = |entries: &[f64]| Hermitian::Dense(DMatrix::from_row_slice(n, n, entries));
+    let mut powers = vec![dense(h0), dense(h1)];
+    powers.resize(HIGHEST_POWER + 1, Hermitian::Zero(n));
+    let model: Rc<dyn Model<f64>> = Rc::new(Linear { powers, edge });
+    AnyLevel::Real(Box::new(level(&model, number).unwrap()))
+}
+
+fn measured(
+    level: &AnyLevel,
+    coefficients: &[f64],
+    tolerance: f64,
+    within: (f64, f64),
+    known: &dyn Fn(f64) -> f64,
+    rounding: f64,
+) -> Result<Ranged> {
+    let base = level.energies()[0];
+    let terms = vec![Term { times: 1.0, system: "toy", level }];
+    let request = Request { at: 0.0, within, terms, known_change: known, base, tolerance };
+    let form = Form::Polynomial { coefficients: coefficients.to_vec() };
+    let zero = |_: f64| 0.0;
+    follow(&request)?.measure(&Candidate { form: &form, numerical: &zero, written: &zero, rounding })
+}
+
+fn none(_: f64) -> f64 {
+    0.0
+}
+
+/// `E = -sqrt(1 + x^2)` against `-1 - x^2/2`: the remainder is
+/// `u^2 / 2` with `u = sqrt(1 + x^2) - 1`, exactly.
+#[test]
+fn a_two_level_system_ends_where_its_closed_form_says() {
+    let level = solved(&[-1.0, 0.0, 0.0, 1.0], &[0.0, 1.0, 1.0, 0.0], 1, None);
+    let tolerance = 1e-3;
+    let end = |error: f64| {
+        let u = libm::sqrt(2.0 * error);
+        libm::sqrt((1.0 + u) * (1.0 + u) - 1.0)
+    };
+    let ranged = measured(&level, &[-1.0, 0.0, -0.5], tolerance, (-1.0, 1.0), &none, 0.0).unwrap();
+    assert!((ranged.valid.1 / end(1e-3) - 1.0).abs() < 1e-6, "{:?}", ranged.valid);
+    assert!((ranged.valid.0 / end(1e-3) + 1.0).abs() < 1e-6, "{:?}", ranged.valid);
+    assert_eq!(ranged.limited_by, [Limit::Remainder; 2]);
+    let wide = measured(&level, &[-1.0, 0.0, -0.5], tolerance, (-0.2, 0.2), &none, 0.0).unwrap();
+    assert_eq!((wide.valid, wide.limited_by), ((-0.2, 0.2), [Limit::Within; 2]));
+    assert!((wide.first_to_fail[1].unwrap() / end(1e-3) - 1.0).abs() < 1e-6);
+    for sample in &wide.samples {
+        let exact = -libm::sqrt(1.0 + sample.control * sample.control);
+        assert!((sample.exact - exact).abs() < 1e-14);
+    }
+    let rounded = measured(&level, &[-1.0, 0.0, -0.5], tolerance, (-0.28, 0.28), &none, 5e-4).unwrap();
+    assert!((rounded.valid.1 / end(5e-4) - 1.0).abs() < 1e-6);
+    assert_eq!(rounded.limited_by, [Limit::Rounding; 2]);
+    assert!(measured(&level, &[-1.1], tolerance, (-1.0, 1.0), &none, 0.0).is_err());
+}
+
+/// Levels `x` and `1 - x` with half gap `w` at `x = 1/2`; the lower one turns away
+/// from the formula `x` by 1.2 to 4 tolerances there. Beyond, the formula is the other level.
+#[test]
+fn no_narrow_crossing_is_missed_wherever_it_hides() {
+    for case in 0..60 {
+        let place = 0.2 + 0.6 * f64::from(case * 37 % 60) / 60.0;
+        let half = 1e-3 * (1.2 + 2.8 * f64::from(case) / 60.0);
+        let level = solved(&[0.0, half, half, 2.0 * place], &[1.0, 0.0, 0.0, -1.0], 1, None);
+        let coefficients = [level.energies()[0], level.energies()[1]];
+        let ranged = measured(&level, &coefficients, 1e-3, (0.0, 1.0), &none, 0.0).unwrap();
+        let exact = |x: f64| place - libm::sqrt((x - place) * (x - place) + half * half);
+        let error = |x: f64| (coefficients[0] + coefficients[1] * x - exact(x)).abs();
+        assert!(ranged.valid.1 < place, "{place} {half}");
+        assert!((error(ranged.valid.1) / 1e-3 - 1.0).abs() < 1e-4, "{place} {half}");
+        assert_eq!(ranged.limited_by, [Limit::Within, Limit::Crossing], "{place} {half}");
+    }
+}
+
+/// Level 0 flat, other level at 10; the edge is `1 - x`, tolerance 0.01: escape at 0.99.
+/// A sum with `sqrt(1 - x)`-like knowledge is undefined from there on.
+#[test]
+fn ranges_end_at_the_escape_edge_and_where_nothing_is_defined() {
+    let flat = |edge| solved(&[0.0, 0.0, 0.0, 10.0], &[0.0, 1e-3, 1e-3, 0.0], 1, edge);
+    let ranged = measured(&flat(Some((1.0, 1.0))), &[0.0], 0.01, (-0.5, 2.0), &none, 0.0).unwrap();
+    assert!((ranged.valid.1 - 0.99).abs() < 1e-6, "{:?}", ranged.valid);
+    assert_eq!(ranged.limited_by, [Limit::Within, Limit::Escape]);
+    let known = |x: f64| if x > 0.75 { f64::NAN } else { 0.0 };
+    let ranged = measured(&flat(None), &[0.0], 0.01, (-0.5, 2.0), &known, 0.0).unwrap();
+    assert!((ranged.valid.1 - 0.75).abs() < 1e-9, "{:?}", ranged.valid);
+    assert_eq!(ranged.limited_by[1], Limit::Undefined);
+}
+
+/// A level that starts degenerate cannot be covered by isolation of a single level: an error, no range.
+#[test]
+fn a_degenerate_start_is_refused() {
+    let level = solved(&[0.0, 0.0, 0.0, 0.0], &[1.0, 0.0, 0.0, -1.0], 1, None);
+    assert!(measured(&level, &[0.0, -1.0], 0.01, (-1.0, 1.0), &none, 0.0).is_err());
+}
