@@ -147,7 +147,8 @@ pub(super) fn walk<T: Scalar>(level: &Level<T>, reach: f64, accuracy: f64, margi
     let span = (reach - at).abs();
     let outwards = if reach >= at { 1.0 } else { -1.0 };
     let start = model.energy(at, &level.state);
-    let room = |x: f64, shift: f64| model.escape_edge(x).map_or(f64::INFINITY, |edge| edge - start - shift - margin);
+    let room =
+        |x: f64, shift: f64| model.escape_edge(x).map_or(f64::INFINITY, |edge| edge - start - shift - margin);
     let mut side = Side { pieces: Vec::new(), end: at, stop: Stop::Reached };
     while (side.end - at).abs() < span {
         let here = side.end;
@@ -173,7 +174,8 @@ pub(super) fn walk<T: Scalar>(level: &Level<T>, reach: f64, accuracy: f64, margi
             bound /= rho;
         }
         let nodes = chebyshev_points(here, to, degree);
-        let values = nodes.iter().map(|&x| solve(level, x).map(|found| found.0)).collect::<Result<Vec<f64>>>()?;
+        let values =
+            nodes.iter().map(|&x| solve(level, x).map(|found| found.0)).collect::<Result<Vec<f64>>>()?;
         let escaped = nodes.iter().zip(&values).find(|&(&x, &shift)| room(x, shift) <= 0.0).map(|(&x, _)| x);
         let mut piece = Piece { from: here, to, bound, nodes, values };
         side.end = to;

@@ -193,7 +193,12 @@ impl Followed<'_> {
         Ok(false)
     }
 
-    fn end(&self, candidate: &Candidate, upper: bool, notes: &mut Vec<Note>) -> Result<(f64, Limit, Option<f64>)> {
+    fn end(
+        &self,
+        candidate: &Candidate,
+        upper: bool,
+        notes: &mut Vec<Note>,
+    ) -> Result<(f64, Limit, Option<f64>)> {
         let side = usize::from(upper);
         let wanted = if upper { self.within.1 } else { self.within.0 };
         if wanted == self.at {
@@ -242,10 +247,13 @@ impl Followed<'_> {
                         )
                         .found(format!("levels {gap:e} apart there, in the model's unit"))
                         .expected("levels far enough apart to prove which is which")
-                        .action("name what separates them under `conserved`, or end `within` before that point"),
+                        .action(
+                            "name what separates them under `conserved`, or end `within` before that point",
+                        ),
                     ));
                 }
-                let text = format!("another level of `{system}` is met at {x}, gap {gap:e} in the model's unit");
+                let text =
+                    format!("another level of `{system}` is met at {x}, gap {gap:e} in the model's unit");
                 notes.push(Note { code: "crossing".to_owned(), text });
                 Ok((x, Limit::Crossing, Some(x)))
             }
