@@ -1,2 +1,4 @@
 //! Published values and general-purpose libraries against the program, one
 //! file per source.
+
+mod stacks;

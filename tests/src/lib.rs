@@ -107,3 +107,44 @@ pub fn tool(folder: &Path, name: &str, arguments: &[&str]) -> Output {
     assert!(output.status.success(), "{name} {arguments:?}: {}", text(&output));
     output
 }
+
+/// Generates from a spec text and gives the record; the spec must succeed.
+///
+/// # Panics
+/// If the program does not end with status 0.
+#[must_use]
+pub fn record(name: &str, spec: &str) -> serde_json::Value {
+    let scratch = Scratch::new(name);
+    scratch.write("spec.yaml", spec);
+    let output = run(scratch.path(), &["generate", "spec.yaml", "--out", "out"]);
+    assert_eq!(output.status.code(), Some(0), "{name}\n{spec}\n{}", text(&output));
+    let folder = scratch.path().join("out");
+    let file = std::fs::read_dir(&folder)
+        .expect("the output folder is there")
+        .filter_map(Result::ok)
+        .map(|entry| entry.path())
+        .find(|path| path.to_string_lossy().ends_with(".record.json"))
+        .expect("a record is always written");
+    serde_json::from_str(&std::fs::read_to_string(file).expect("the record can be read")).expect("the record is JSON")
+}
+
+/// A number inside a record by its path, `formulas/edge/coefficients/2`.
+///
+/// # Panics
+/// If there is no number.
+#[must_use]
+pub fn number(record: &serde_json::Value, path: &str) -> f64 {
+    record
+        .pointer(&format!("/{path}"))
+        .and_then(serde_json::Value::as_f64)
+        .unwrap_or_else(|| panic!("no number at {path} in {record:#}"))
+}
+
+/// Insists that two numbers agree to a relative error.
+///
+/// # Panics
+/// If they do not.
+pub fn close(what: &str, found: f64, expected: f64, relative: f64) {
+    let error = (found - expected).abs() / expected.abs();
+    assert!(error <= relative, "{what}: {found:e}, expected {expected:e}, relative error {error:.2e} > {relative:.0e}");
+}

@@ -96,7 +96,7 @@ impl Sum {
             fifth += term.times() * energies[5];
         }
         for (weight, tree) in &known {
-            let taylor = tree.taylor(at, 5);
+            let taylor = tree.taylor(at, 0.0);
             for (power, coefficient) in taylor.iter().enumerate() {
                 if !coefficient.is_finite() {
                     return Err(Error::spec(
@@ -134,7 +134,7 @@ impl Sum {
 
     /// The known terms' change from the operating point.
     pub fn known_change(&self, at: f64, control: f64) -> f64 {
-        self.known.iter().map(|(weight, tree)| weight * (tree.value(control, 0.0) - tree.value(at, 0.0))).sum()
+        self.known.iter().map(|(weight, tree)| weight * tree.change(at, control, 0.0)).sum()
     }
 
     /// The known terms at the operating point.

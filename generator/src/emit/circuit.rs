@@ -1,0 +1,155 @@
+//! What the circuit languages share: a formula as named constants and steps.
+//!
+//! A circuit output evaluates the same nested form as the double-precision
+//! file, then goes on along the tangent outside the range, so that value and
+//! slope are continuous and a simulator's iterations converge. Languages print
+//! the steps; they do no arithmetic.
+
+use crate::form::Form;
+use crate::outcome::{FormulaOutcome, Outcome, ValueKind};
+
+/// A named constant.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Constant {
+    /// Full name, stem included.
+    pub name: String,
+    /// Value.
+    pub value: f64,
+}
+
+/// One polynomial as the names of its coefficients by rising power.
+#[derive(Clone, Debug, PartialEq)]
+pub struct Polynomial {
+    /// Names of the coefficients.
+    pub names: Vec<String>,
+}
+
+impl Polynomial {
+    /// `c0 + d * (c1 + d * c2)` with `d` written as `offset`.
+    #[must_use]
+    pub fn value(&self, offset: &str) -> String {
+        nested(&self.names, offset)
+    }
+
+    /// The derivative in the same nesting; a constant gives `0.0`.
+    #[must_use]
+    pub fn slope(&self, offset: &str) -> String {
+        let names: Vec<String> = self
+            .names
+            .iter()
+            .enumerate()
+            .skip(1)
+            .map(|(power, name)| if power == 1 { name.clone() } else { format!("({power}.0 * {name})") })
+            .collect();
+        if names.is_empty() { "0.0".to_string() } else { nested(&names, offset) }
+    }
+}
+
+/// Nests coefficients by rising power.
+fn nested(names: &[String], offset: &str) -> String {
+    match names {
+        [] => "0.0".to_string(),
+        [last] => last.clone(),
+        [first, rest @ ..] => {
+            let inner = nested(rest, offset);
+            if rest.len() == 1 {
+                format!("{first} + {offset} * {inner}")
+            } else {
+                format!("{first} + {offset} * ({inner})")
+            }
+        }
+    }
+}
+
+/// A formula as a circuit file needs it.
+#[derive(Clone, Debug, PartialEq)]
+pub struct CircuitFormula {
+    /// Name.
+    pub name: String,
+    /// Unit of the value.
+    pub unit: String,
+    /// Range and operating point, control unit.
+    pub from: f64,
+    /// Upper end.
+    pub to: f64,
+    /// Operating point.
+    pub at: f64,
+    /// All constants.
+    pub constants: Vec<Constant>,
+    /// The polynomial, or the mean of a pair.
+    pub main: Polynomial,
+    /// Squared half gap of a pair and its sign.
+    pub gap: Option<(Polynomial, f64)>,
+}
+
+impl CircuitFormula {
+    /// Takes the numbers from a measured formula.
+    #[must_use]
+    pub fn new(outcome: &Outcome, formula: &FormulaOutcome) -> Self {
+        let stem = format!("{}_{}", outcome.name, formula.name);
+        let mut constants = Vec::new();
+        let mut polynomial = |word: &str, values: &[f64]| {
+            let mut names = Vec::with_capacity(values.len());
+            for (power, &value) in values.iter().enumerate() {
+                let name = format!("{stem}_{word}{power}");
+                constants.push(Constant { name: name.clone(), value });
+                names.push(name);
+            }
+            Polynomial { names }
+        };
+        let (main, gap) = match &formula.form {
+            Form::Polynomial { coefficients } => {
+                let mut values = coefficients.clone();
+                if let (ValueKind::Shift, Some(first)) = (formula.value, values.first_mut()) {
+                    *first = 0.0;
+                }
+                (polynomial("c", &values), None)
+            }
+            Form::Paired { mean, half_gap_squared, sign, .. } => {
+                let main = polynomial("mean_", mean);
+                (main, Some((polynomial("half_gap_squared_", half_gap_squared), *sign)))
+            }
+        };
+        Self {
+            name: formula.name.clone(),
+            unit: formula.unit.clone(),
+            from: formula.valid.from,
+            to: formula.valid.to,
+            at: outcome.control.at,
+            constants,
+            main,
+            gap,
+        }
+    }
+}
+
+/// A real literal that both circuit languages read as a real number.
+#[must_use]
+pub fn literal(value: f64) -> String {
+    let size = value.abs();
+    let text = if size != 0.0 && !(1e-4..1e15).contains(&size) { format!("{value:e}") } else { format!("{value:?}") };
+    if value.is_sign_negative() { format!("({text})") } else { text }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+
+    #[test]
+    fn polynomials_nest_from_the_highest_power_inwards() {
+        let p = Polynomial { names: vec!["c0".into(), "c1".into(), "c2".into(), "c3".into()] };
+        assert_eq!(p.value("d"), "c0 + d * (c1 + d * (c2 + d * c3))");
+        assert_eq!(p.slope("d"), "c1 + d * ((2.0 * c2) + d * (3.0 * c3))");
+        assert_eq!(Polynomial { names: vec!["c0".into()] }.slope("d"), "0.0");
+    }
+
+    #[test]
+    fn literals_read_back_to_the_same_double() {
+        for value in [34.5, -5.4e-4, 1e-300, -2.0, 0.0, 1e22, 123456789.12345679, -5e-324] {
+            let text = literal(value);
+            let bare = text.trim_start_matches('(').trim_end_matches(')');
+            assert_eq!(bare.parse::<f64>().ok(), Some(value), "{text}");
+            assert!(bare.contains(['.', 'e']), "{text} would be an integer");
+        }
+    }
+}
