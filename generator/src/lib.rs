@@ -23,6 +23,7 @@ pub mod formula;
 pub mod model;
 pub mod outcome;
 pub mod pencil;
+pub mod pipeline;
 pub mod range;
 pub mod review;
 pub mod series;

@@ -16,7 +16,8 @@ fn drawn_stacks_agree_with_airy_solutions() {
     let cases = cases.as_array().expect("a list of cases");
     assert_eq!(cases.len(), 12);
     for (idx, case) in cases.iter().enumerate() {
-        let text = |key: &str| case[key].as_str().expect("a number as text").parse::<f64>().expect("a number");
+        let text =
+            |key: &str| case[key].as_str().expect("a number as text").parse::<f64>().expect("a number");
         let layers: Vec<String> = case["layers"]
             .as_array()
             .expect("layers")

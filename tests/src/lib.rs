@@ -125,7 +125,8 @@ pub fn record(name: &str, spec: &str) -> serde_json::Value {
         .map(|entry| entry.path())
         .find(|path| path.to_string_lossy().ends_with(".record.json"))
         .expect("a record is always written");
-    serde_json::from_str(&std::fs::read_to_string(file).expect("the record can be read")).expect("the record is JSON")
+    serde_json::from_str(&std::fs::read_to_string(file).expect("the record can be read"))
+        .expect("the record is JSON")
 }
 
 /// A number inside a record by its path, `formulas/edge/coefficients/2`.
@@ -146,5 +147,8 @@ pub fn number(record: &serde_json::Value, path: &str) -> f64 {
 /// If they do not.
 pub fn close(what: &str, found: f64, expected: f64, relative: f64) {
     let error = (found - expected).abs() / expected.abs();
-    assert!(error <= relative, "{what}: {found:e}, expected {expected:e}, relative error {error:.2e} > {relative:.0e}");
+    assert!(
+        error <= relative,
+        "{what}: {found:e}, expected {expected:e}, relative error {error:.2e} > {relative:.0e}"
+    );
 }

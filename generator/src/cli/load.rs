@@ -3,7 +3,6 @@
 use std::path::{Path, PathBuf};
 
 use crate::diagnostic::{Diagnostic, Error, Result};
-use crate::emit::Source;
 use crate::outcome::{Outcome, Picture};
 use crate::spec::{Document, Loader, Spec};
 
@@ -37,14 +36,6 @@ impl Loaded {
             (None, None) => PathBuf::from("generated"),
         }
     }
-}
-
-/// A finished run: what the record says, and the files with the record last.
-pub struct Run {
-    /// The outcome, outputs filled in.
-    pub outcome: Outcome,
-    /// The files.
-    pub sources: Vec<Source>,
 }
 
 /// Text of a spec from disk.
@@ -93,21 +84,7 @@ impl Loader for Beside {
     }
 }
 
-/// Solves a spec and emits its files.
-///
-/// # Errors
-/// What the stages return.
-pub fn run(_spec: &Spec) -> Result<Run> {
-    Err(Error::internal("this build holds no pipeline yet"))
-}
-
-/// Solves a spec without emitting files.
-///
-/// # Errors
-/// What the stages return.
-pub fn solve(spec: &Spec) -> Result<Outcome> {
-    run(spec).map(|run| run.outcome)
-}
+pub use crate::pipeline::{Run, run, solve};
 
 /// What is drawn of a spec's systems.
 ///

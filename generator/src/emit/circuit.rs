@@ -5,8 +5,66 @@
 //! slope are continuous and a simulator's iterations converge. Languages print
 //! the steps; they do no arithmetic.
 
+use super::{Source, header, spice, verilog_a};
+use crate::diagnostic::Result;
 use crate::form::Form;
-use crate::outcome::{FormulaOutcome, Outcome, ValueKind};
+use crate::outcome::{FormulaOutcome, Outcome, OutputFormula, ValueKind};
+use crate::spec::{Language, Output};
+
+/// Prints one circuit output with its entries in the record.
+///
+/// # Errors
+/// Only if a template is broken.
+pub fn print(outcome: &Outcome, output: &Output) -> Result<(Source, Vec<OutputFormula>)> {
+    let entries: Vec<header::Entry<'_>> = outcome
+        .formulas
+        .iter()
+        .map(|measured| header::Entry {
+            measured,
+            valid: &measured.valid,
+            rounding: rounding(measured),
+            inverse_rounding: None,
+        })
+        .collect();
+    let evaluation = "Evaluated as c0 + d*(c1 + d*c2) in the simulator's double precision. Outside the range the value goes \
+                      on along the tangent at the end and `ok` falls to 0: the numbers there are no prediction.";
+    let verilog = output.language == Language::VerilogA;
+    let format = if verilog { "Verilog-A module" } else { "SPICE sub-circuit" };
+    let lines = header::lines(outcome, &outcome.name, format, evaluation, &entries);
+    let (ending, text) = if verilog {
+        ("va", verilog_a::print(outcome, &lines)?)
+    } else {
+        ("cir", spice::print(outcome, &lines)?)
+    };
+    let formulas = outcome
+        .formulas
+        .iter()
+        .map(|one| OutputFormula {
+            name: one.name.clone(),
+            rounding: rounding(one),
+            coefficients: coefficients(&one.form),
+            valid: one.valid.clone(),
+        })
+        .collect();
+    Ok((Source { file: format!("{}.{ending}", outcome.name), text }, formulas))
+}
+
+/// What the file evaluates, as the record shows it.
+fn coefficients(form: &Form) -> serde_json::Value {
+    match form {
+        Form::Polynomial { coefficients } => serde_json::json!(coefficients),
+        Form::Paired { mean, half_gap_squared, sign, partner } => serde_json::json!({
+            "mean": mean, "half_gap_squared": half_gap_squared, "sign": sign, "partner": partner
+        }),
+    }
+}
+
+/// Agreement with the double-precision file that circuit outputs promise:
+/// 1e-12 of the largest value inside the range.
+fn rounding(formula: &FormulaOutcome) -> f64 {
+    let largest = formula.samples.iter().fold(0.0_f64, |most, sample| most.max(sample.formula.abs()));
+    1e-12 * largest
+}
 
 /// A named constant.
 #[derive(Clone, Debug, PartialEq)]
@@ -127,7 +185,11 @@ impl CircuitFormula {
 #[must_use]
 pub fn literal(value: f64) -> String {
     let size = value.abs();
-    let text = if size != 0.0 && !(1e-4..1e15).contains(&size) { format!("{value:e}") } else { format!("{value:?}") };
+    let text = if size != 0.0 && !(1e-4..1e15).contains(&size) {
+        format!("{value:e}")
+    } else {
+        format!("{value:?}")
+    };
     if value.is_sign_negative() { format!("({text})") } else { text }
 }
 

@@ -5,11 +5,14 @@
 pub mod record;
 
 pub mod c;
+pub mod circuit;
 pub mod header;
 mod output;
 pub mod rust;
 mod self_check;
+mod spice;
 pub mod text;
+mod verilog_a;
 
 pub use output::{Circuit, outputs};
 pub use self_check::self_check;

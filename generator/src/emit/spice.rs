@@ -5,8 +5,8 @@
 
 use minijinja::context;
 
+use super::c::fill;
 use super::circuit::{CircuitFormula, literal};
-use super::verilog_a::fill;
 use crate::diagnostic::Result;
 use crate::outcome::Outcome;
 
@@ -70,11 +70,14 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
             }
         })
         .collect();
-    fill("spice.cir", TEMPLATE, context! {
-        header => header,
-        name => stem,
-        control_unit => outcome.control.unit,
-        formulas => formulas,
-        family => Vec::<String>::new(),
-    })
+    fill(
+        TEMPLATE,
+        &context! {
+            header => header.to_vec(),
+            name => stem,
+            control_unit => outcome.control.unit.clone(),
+            formulas => formulas,
+            family => Vec::<String>::new(),
+        },
+    )
 }

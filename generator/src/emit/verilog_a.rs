@@ -3,10 +3,11 @@
 //! Written for the open language standard (Verilog-AMS language reference, the
 //! analog subset): scalars only, no arrays, no system functions but `$strobe`.
 
-use minijinja::{Environment, context};
+use minijinja::context;
 
+use super::c::fill;
 use super::circuit::{CircuitFormula, literal};
-use crate::diagnostic::{Error, Result};
+use crate::diagnostic::Result;
 use crate::outcome::Outcome;
 
 const TEMPLATE: &str = include_str!("../../../templates/verilog_a.va");
@@ -41,30 +42,20 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
                 from => literal(one.from),
                 to => literal(one.to),
                 at => literal(one.at),
-                constants => one.constants.iter().map(|c| context! { name => c.name, value => literal(c.value) }).collect::<Vec<_>>(),
+                constants => one.constants.iter().map(|c| context! { name => c.name.clone(), value => literal(c.value) }).collect::<Vec<_>>(),
                 steps => steps,
                 locals => locals,
             }
         })
         .collect();
-    fill("verilog_a.va", TEMPLATE, context! {
-        header => header,
-        name => outcome.name,
-        control_unit => outcome.control.unit,
-        formulas => formulas,
-        family => Vec::<String>::new(),
-    })
-}
-
-/// Fills a template with strict names.
-pub(super) fn fill(name: &str, template: &str, values: minijinja::Value) -> Result<String> {
-    let mut environment = Environment::new();
-    environment.set_trim_blocks(true);
-    environment.set_lstrip_blocks(true);
-    environment.set_keep_trailing_newline(true);
-    environment.set_undefined_behavior(minijinja::UndefinedBehavior::Strict);
-    environment.set_auto_escape_callback(|_| minijinja::AutoEscape::None);
-    environment
-        .render_named_str(name, template, values)
-        .map_err(|e| Error::internal(format!("template {name}: {e:#}")))
+    fill(
+        TEMPLATE,
+        &context! {
+            header => header.to_vec(),
+            name => outcome.name.clone(),
+            control_unit => outcome.control.unit.clone(),
+            formulas => formulas,
+            family => Vec::<String>::new(),
+        },
+    )
 }

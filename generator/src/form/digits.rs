@@ -41,6 +41,23 @@ pub fn written(value: f64, uncertainty: f64) -> f64 {
     cut(value, (top - (doubtful - 2) + 1).clamp(FEWEST, MOST))
 }
 
+/// An uncertainty as it is written: two digits, rounded up, so that noise in
+/// its further digits never shows.
+#[must_use]
+pub fn written_uncertainty(value: f64) -> f64 {
+    if !(value > 0.0) || !value.is_finite() {
+        return value;
+    }
+    let text = format!("{value:.1e}");
+    let near: f64 = text.parse().unwrap_or(value);
+    if near >= value {
+        return near;
+    }
+    let Some((digits, exponent)) = text.split_once('e') else { return value };
+    let tenths: u32 = digits.replace('.', "").parse().unwrap_or(10);
+    format!("{}e{exponent}", f64::from(tenths + 1) / 10.0).parse().unwrap_or(value)
+}
+
 /// Both ends of a range to 7 significant digits, rounded inwards, towards
 /// `at`; an end that would pass `at` stays on it.
 #[must_use]

@@ -9,7 +9,7 @@
 mod digits;
 mod minimax;
 
-pub use digits::{written, written_range};
+pub use digits::{written, written_range, written_uncertainty};
 pub use minimax::{Best, best, widest};
 
 /// A closed form of the offset `d = control - at`.

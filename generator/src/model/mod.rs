@@ -154,19 +154,19 @@ pub struct Request<'a> {
 /// # Errors
 /// A level or block that the system does not have, an expression that is not
 /// finite where it is needed, or a problem too large.
-pub fn build(
-    system: &crate::spec::System,
-    request: &Request<'_>,
-) -> crate::diagnostic::Result<Built> {
+pub fn build(system: &crate::spec::System, request: &Request<'_>) -> crate::diagnostic::Result<Built> {
     use crate::spec::Kind;
     match &system.kind {
         Kind::Layers(layers) => layers::build(system, layers, request),
         Kind::Matrix(matrix) => matrix::build(system, matrix, request),
         Kind::Parts(parts) => parts::build(system, parts, request),
         Kind::Radial(_) => Err(crate::diagnostic::Error::spec(
-            crate::diagnostic::Diagnostic::new("not-built", "systems of kind `radial` are read but not yet solved")
-                .at(Some(system.place.clone()))
-                .action("use `layers`, `parts` or `matrix`; this version has no solver for shells"),
+            crate::diagnostic::Diagnostic::new(
+                "not-built",
+                "systems of kind `radial` are read but not yet solved",
+            )
+            .at(Some(system.place.clone()))
+            .action("use `layers`, `parts` or `matrix`; this version has no solver for shells"),
         )),
     }
 }

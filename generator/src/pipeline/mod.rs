@@ -15,9 +15,10 @@ use std::rc::Rc;
 pub use settle::{Purpose, Settled};
 pub use sum::{LevelTerm, Sum};
 
-use crate::diagnostic::Result;
+use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::emit::{self, Source};
-use crate::outcome::{ControlOutcome, FamilyParameterOutcome, Outcome};
+use crate::outcome::{ControlOutcome, FormulaOutcome, Outcome, ValueKind};
+use crate::range;
 use crate::spec::{Formula, LevelRef, Spec, Target, TermKind};
 
 /// A finished run.
@@ -29,15 +30,20 @@ pub struct Run {
     pub sources: Vec<Source>,
 }
 
+/// Times that a run starts again with larger bases because the exact levels at
+/// the ends of a range had not settled.
+const ROUNDS: usize = 4;
+
+/// Part of the tolerance to which exact levels at the ends must have settled.
+const SETTLED_AT_ENDS: f64 = 1e-3;
+
 /// Solves every formula of a spec and emits every output.
 ///
 /// # Errors
 /// A mistake of the spec that only solving shows, an accuracy that was not
 /// reached, or a tolerance that fails already at the operating point.
 pub fn run(spec: &Spec) -> Result<Run> {
-    let mut outcome = solve(spec)?;
-    let sources = emit::all(spec, &mut outcome)?;
-    Ok(Run { outcome, sources })
+    with_formulas(spec, true)
 }
 
 /// Solves every formula of a spec; no output is emitted.
@@ -45,12 +51,91 @@ pub fn run(spec: &Spec) -> Result<Run> {
 /// # Errors
 /// As [`run`].
 pub fn solve(spec: &Spec) -> Result<Outcome> {
-    let mut cache = Cache::new(spec);
-    let mut formulas = Vec::with_capacity(spec.formulas.len());
-    for formula in &spec.formulas {
-        formulas.push(formula::outcome(spec, formula, &mut cache)?);
+    with_formulas(spec, false).map(|run| run.outcome)
+}
+
+fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
+    if let Some(parameter) = spec.family.first() {
+        return Err(Error::spec(
+            Diagnostic::new(
+                "not-built",
+                format!("`family` is read but not yet fitted (`{}`)", parameter.name),
+            )
+            .action("remove `family`, or generate one spec per value of the constant"),
+        ));
     }
-    Ok(Outcome {
+    let at = spec.control.at;
+    let mut cache = Cache::new(spec);
+    let mut first = vec![0; spec.formulas.len()];
+    for round in 0..ROUNDS {
+        let mut sums = Vec::with_capacity(spec.formulas.len());
+        let mut doubts = Vec::with_capacity(spec.formulas.len());
+        for (formula, &first) in spec.formulas.iter().zip(&first) {
+            let sum = cache.sum(formula, first)?;
+            doubts.push(formula::Numerical::new(spec, formula, &sum)?);
+            sums.push(sum);
+        }
+        let unsettled: Vec<usize> = (0..sums.len())
+            .filter(|&idx| {
+                let refinable = sums[idx].levels.iter().any(|term| term.settled.built.refinable);
+                refinable && doubts[idx].largest() > SETTLED_AT_ENDS * spec.formulas[idx].tolerance
+            })
+            .collect();
+        if !unsettled.is_empty() && round + 1 < ROUNDS {
+            for idx in unsettled {
+                first[idx] = sums[idx].levels.iter().map(|term| term.settled.refinement).max().unwrap_or(0);
+            }
+            continue;
+        }
+        let known: Vec<_> =
+            sums.iter().map(|sum| move |control: f64| sum.known_change(at, control)).collect();
+        let mut followed = Vec::with_capacity(sums.len());
+        for ((formula, sum), known_change) in spec.formulas.iter().zip(&sums).zip(&known) {
+            let terms = sum
+                .levels
+                .iter()
+                .map(|term| range::Term {
+                    times: term.times(),
+                    system: &term.system,
+                    level: &term.settled.level,
+                })
+                .collect();
+            followed.push(range::follow(&range::Request {
+                at,
+                within: spec.control.within,
+                terms,
+                known_change,
+                base: if formula.value == ValueKind::Shift { 0.0 } else { sum.series[0] },
+                tolerance: formula.tolerance,
+            })?);
+        }
+        let mut measured = Vec::with_capacity(sums.len());
+        for (idx, formula) in spec.formulas.iter().enumerate() {
+            measured.push(formula::outcome(spec, formula, &sums[idx], &followed[idx], &doubts[idx])?);
+        }
+        let mut outcome = outcome(spec, measured.iter().map(|one| one.outcome.clone()).collect());
+        let mut sources = Vec::new();
+        if emitting {
+            sources = emit::outputs(
+                spec,
+                &mut outcome,
+                &|idx, rounding| {
+                    measured[idx].own_range(spec, &spec.formulas[idx], &followed[idx], &doubts[idx], rounding)
+                },
+                &emit::circuit::print,
+            )?;
+            sources.push(Source {
+                file: emit::record::file_name(&outcome.name),
+                text: emit::record::write(&outcome)?,
+            });
+        }
+        return Ok(Run { outcome, sources });
+    }
+    Err(Error::internal("a run ended in no round"))
+}
+
+fn outcome(spec: &Spec, formulas: Vec<FormulaOutcome>) -> Outcome {
+    Outcome {
         name: spec.name.clone(),
         summary: spec.summary.clone(),
         spec: spec.file.clone(),
@@ -62,20 +147,11 @@ pub fn solve(spec: &Spec) -> Result<Outcome> {
             at: spec.control.at,
             within: spec.control.within,
         },
-        family: spec
-            .family
-            .iter()
-            .map(|parameter| FamilyParameterOutcome {
-                name: parameter.name.clone(),
-                unit: parameter.unit.symbol.clone(),
-                from: parameter.from,
-                to: parameter.to,
-            })
-            .collect(),
+        family: Vec::new(),
         formulas,
         outputs: Vec::new(),
         warnings: spec.warnings.clone(),
-    })
+    }
 }
 
 /// Where exact levels may be asked for: twice as far from the operating point
@@ -105,6 +181,38 @@ pub(crate) struct Cache<'a> {
 impl<'a> Cache<'a> {
     fn new(spec: &'a Spec) -> Self {
         Self { spec, entries: Vec::new() }
+    }
+
+    /// The levels and known terms of a formula, added up.
+    fn sum(&mut self, formula: &Formula, first: usize) -> Result<Sum> {
+        let Target::Sum(terms) = &formula.target else {
+            return Err(Error::spec(
+                Diagnostic::new(
+                    "not-built",
+                    format!("`{}` asks for an overlap, which is read but not yet measured", formula.name),
+                )
+                .at(Some(formula.place.clone()))
+                .action("use `sum`"),
+            ));
+        };
+        let mut levels = Vec::new();
+        let mut known = Vec::new();
+        for term in terms {
+            match &term.kind {
+                TermKind::Known(tree) => known.push((term.times, tree.clone())),
+                TermKind::Level(reference) => {
+                    let settled = self.level(reference, formula.order, first)?;
+                    levels.push(LevelTerm {
+                        system: self.spec.systems[reference.system].name.clone(),
+                        reference: reference.clone(),
+                        weight: term.times,
+                        conversion: sum::conversion(&settled.built.unit, formula)?,
+                        settled,
+                    });
+                }
+            }
+        }
+        Sum::new(levels, known, self.spec.control.at, formula)
     }
 
     /// A level, refined at least to `first`, right for coefficients up to `order`.

@@ -124,7 +124,10 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
                     return Err(Error::accuracy(
                         Diagnostic::new(
                             "not-settled",
-                            format!("level {} of `{}` does not settle as the basis grows", level.level, system.name),
+                            format!(
+                                "level {} of `{}` does not settle as the basis grows",
+                                level.level, system.name
+                            ),
                         )
                         .at(Some(level.place.clone()))
                         .found(format!(
@@ -132,7 +135,9 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
                             new[0], uncertainty[0], built.size
                         ))
                         .expected("an uncertainty below 1e-6 of the level")
-                        .action("check that the Hamiltonian is bounded from below and that the level is bound"),
+                        .action(
+                            "check that the Hamiltonian is bounded from below and that the level is bound",
+                        ),
                     ));
                 }
                 let notes = vec![Note {
@@ -194,7 +199,8 @@ fn ordinal_digit(uncertainty: f64, value: f64) -> String {
     if value == 0.0 || uncertainty == 0.0 {
         return "first".into();
     }
-    let digit = (libm::floor(libm::log10(value.abs())) - libm::floor(libm::log10(uncertainty))).max(0.0) as usize + 1;
+    let digit =
+        (libm::floor(libm::log10(value.abs())) - libm::floor(libm::log10(uncertainty))).max(0.0) as usize + 1;
     match digit {
         1 => "first".into(),
         2 => "second".into(),

@@ -47,8 +47,6 @@ pub struct Sum {
     pub uncertainty: [f64; 5],
     /// Why each is exactly zero, where it is.
     pub zero: [Option<String>; 5],
-    /// Fifth coefficient, for remainder estimates.
-    pub fifth: f64,
 }
 
 /// The conversion from a model's unit to a formula's.
@@ -66,11 +64,15 @@ impl Sum {
     ///
     /// # Errors
     /// If a known term or one of its derivatives is not finite at the operating point.
-    pub fn new(levels: Vec<LevelTerm>, known: Vec<(f64, Tree)>, at: f64, formula: &spec::Formula) -> Result<Self> {
+    pub fn new(
+        levels: Vec<LevelTerm>,
+        known: Vec<(f64, Tree)>,
+        at: f64,
+        formula: &spec::Formula,
+    ) -> Result<Self> {
         let mut series = [0.0; 5];
         let mut uncertainty = [0.0; 5];
         let mut size = [0.0_f64; 5];
-        let mut fifth = 0.0;
         let mut zero: [Option<String>; 5] = std::array::from_fn(|power| (power > 0).then(String::new));
         for term in &levels {
             let energies = term.settled.level.energies();
@@ -93,27 +95,25 @@ impl Sum {
                     (None, Some(_)) => {}
                 }
             }
-            fifth += term.times() * energies[5];
         }
         for (weight, tree) in &known {
             let taylor = tree.taylor(at, 0.0);
             for (power, coefficient) in taylor.iter().enumerate() {
                 if !coefficient.is_finite() {
                     return Err(Error::spec(
-                        Diagnostic::new("undefined", "a known term of the sum is not defined at the operating point")
-                            .at(Some(formula.place.clone()))
-                            .action("move `at`, or change the expression"),
+                        Diagnostic::new(
+                            "undefined",
+                            "a known term of the sum is not defined at the operating point",
+                        )
+                        .at(Some(formula.place.clone()))
+                        .action("move `at`, or change the expression"),
                     ));
                 }
-                if power == 5 {
-                    fifth += weight * coefficient;
-                } else {
-                    let part = weight * coefficient;
-                    series[power] += part;
-                    size[power] += part.abs();
-                    if part != 0.0 {
-                        zero[power] = None;
-                    }
+                let part = weight * coefficient;
+                series[power] += part;
+                size[power] += part.abs();
+                if part != 0.0 {
+                    zero[power] = None;
                 }
             }
         }
@@ -129,7 +129,7 @@ impl Sum {
                 uncertainty[power] = uncertainty[power].max(f64::EPSILON * size[power]);
             }
         }
-        Ok(Self { levels, known, series, uncertainty, zero, fifth })
+        Ok(Self { levels, known, series, uncertainty, zero })
     }
 
     /// The known terms' change from the operating point.
@@ -241,6 +241,7 @@ impl Sum {
 
 /// A system's name with the values that select its block, `atom (m = 1)`.
 fn block_name(system: &str, reference: &LevelRef) -> String {
-    let values: Vec<String> = reference.block.iter().map(|(name, value)| format!("{name} = {value}")).collect();
+    let values: Vec<String> =
+        reference.block.iter().map(|(name, value)| format!("{name} = {value}")).collect();
     format!("{system} ({})", values.join(", "))
 }

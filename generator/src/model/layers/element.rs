@@ -168,8 +168,7 @@ pub fn open_end(n: usize) -> Rc<Element> {
         for column in 0..count {
             if row != column {
                 // At these nodes L_{n+1} and L_n agree, so either serves.
-                derivative[row * count + column] =
-                    at_n[row] / (at_n[column] * (nodes[row] - nodes[column]));
+                derivative[row * count + column] = at_n[row] / (at_n[column] * (nodes[row] - nodes[column]));
             }
         }
     }

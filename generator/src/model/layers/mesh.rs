@@ -257,7 +257,12 @@ impl Mesh {
                 }
             }
         }
-        let width = pieces.iter().map(|piece| piece.element.len() - 1).max().unwrap_or(0).min(order.saturating_sub(1));
+        let width = pieces
+            .iter()
+            .map(|piece| piece.element.len() - 1)
+            .max()
+            .unwrap_or(0)
+            .min(order.saturating_sub(1));
         Ok(Self { pieces, positions, width, faces: (-layers.origin, face) })
     }
 
@@ -275,9 +280,8 @@ impl Mesh {
         for piece in &self.pieces {
             let n = piece.element.len();
             let rows: Vec<Option<usize>> = (0..n).map(|local| piece.unknown(local)).collect();
-            let factors: Vec<f64> = (0..n)
-                .map(|k| piece.element.weights[k] * piece.stiffness(k) / piece.jacobian)
-                .collect();
+            let factors: Vec<f64> =
+                (0..n).map(|k| piece.element.weights[k] * piece.stiffness(k) / piece.jacobian).collect();
             for i in 0..n {
                 let Some(row) = rows[i] else { continue };
                 for j in 0..n {
@@ -287,7 +291,9 @@ impl Mesh {
                     }
                     let mut sum = 0.0;
                     for k in 0..n {
-                        sum += factors[k] * piece.element.derivative[k * n + i] * piece.element.derivative[k * n + j];
+                        sum += factors[k]
+                            * piece.element.derivative[k * n + i]
+                            * piece.element.derivative[k * n + j];
                     }
                     band.add(row, column, sum / (roots[row] * roots[column]));
                 }
@@ -302,8 +308,9 @@ impl Mesh {
         let mut energy = 0.0;
         for piece in &self.pieces {
             let n = piece.element.len();
-            let local: Vec<f64> =
-                (0..n).map(|idx| piece.unknown(idx).and_then(|row| values.get(row)).copied().unwrap_or(0.0)).collect();
+            let local: Vec<f64> = (0..n)
+                .map(|idx| piece.unknown(idx).and_then(|row| values.get(row)).copied().unwrap_or(0.0))
+                .collect();
             for k in 0..n {
                 let slope: f64 = (0..n).map(|j| piece.element.derivative[k * n + j] * local[j]).sum();
                 energy += piece.element.weights[k] * piece.stiffness(k) / piece.jacobian * slope * slope;
@@ -399,9 +406,15 @@ impl Scale {
             _ => self.low,
         };
         // Either the carrier moves (below its energy) or it decays (above).
-        let depth = self.energy.min((edge - self.low).abs().max(0.6 * self.energy)) + 0.25 * self.slope * layer.thickness;
+        let depth = self.energy.min((edge - self.low).abs().max(0.6 * self.energy))
+            + 0.25 * self.slope * layer.thickness;
         let wave = (depth.max(0.0) * mass / kinetic_ev_nm2()).sqrt();
-        let varying = if matches!(layer.edge, Profile::Function(_)) || matches!(layer.mass, Profile::Function(_)) { 2.0 } else { 1.0 };
+        let varying =
+            if matches!(layer.edge, Profile::Function(_)) || matches!(layer.mass, Profile::Function(_)) {
+                2.0
+            } else {
+                1.0
+            };
         let count = libm::ceil(varying * wave * layer.thickness / PHASE);
         if count.is_finite() { (count as usize).clamp(1, 100_000) } else { 1 }
     }

@@ -10,8 +10,8 @@ use crate::spec::{Layer, Layers, Profile};
 /// that is not proved.
 pub fn proof(layers: &Layers, at: f64) -> Option<String> {
     let total = layers.stack.len();
-    let symmetric = layers.centred
-        && (0..total).all(|idx| mirrored(&layers.stack[idx], &layers.stack[total - 1 - idx]));
+    let symmetric =
+        layers.centred && (0..total).all(|idx| mirrored(&layers.stack[idx], &layers.stack[total - 1 - idx]));
     if !symmetric {
         return None;
     }

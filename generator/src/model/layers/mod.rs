@@ -66,7 +66,10 @@ pub fn build(system: &System, layers: &Layers, request: &Request<'_>) -> Result<
             return Err(Error::spec(
                 Diagnostic::new(
                     "not-bound",
-                    format!("level {} of `{}` is not bound at the operating point", request.level, system.name),
+                    format!(
+                        "level {} of `{}` is not bound at the operating point",
+                        request.level, system.name
+                    ),
                 )
                 .at(Some(system.place.clone()))
                 .found(format!("level {}", request.level))
@@ -80,8 +83,11 @@ pub fn build(system: &System, layers: &Layers, request: &Request<'_>) -> Result<
     }
     if request.level > model.order() {
         return Err(Error::spec(
-            Diagnostic::new("no-such-level", format!("level {} of `{}` is out of reach", request.level, system.name))
-                .at(Some(system.place.clone())),
+            Diagnostic::new(
+                "no-such-level",
+                format!("level {} of `{}` is out of reach", request.level, system.name),
+            )
+            .at(Some(system.place.clone())),
         ));
     }
     let energy = pencil::eigenpair(model.expansion(0), request.level)?.energy;
@@ -189,7 +195,9 @@ impl Stack {
             scale: 0.0,
         };
         stack.expansion = (0..=HIGHEST_POWER)
-            .map(|power| if power == 0 { stack.hamiltonian(request.at) } else { stack.coefficient(request.at, power) })
+            .map(|power| {
+                if power == 0 { stack.hamiltonian(request.at) } else { stack.coefficient(request.at, power) }
+            })
             .collect();
         let finite = |h: &Hermitian<f64>| match h {
             Hermitian::Zero(_) => true,
@@ -199,9 +207,12 @@ impl Stack {
         };
         if !stack.expansion.iter().all(finite) {
             return Err(Error::spec(
-                Diagnostic::new("undefined", format!("edge, mass or field of `{}` is not finite", system.name))
-                    .at(Some(system.place.clone()))
-                    .expected("finite values and a positive mass all over the stack, at the operating point"),
+                Diagnostic::new(
+                    "undefined",
+                    format!("edge, mass or field of `{}` is not finite", system.name),
+                )
+                .at(Some(system.place.clone()))
+                .expected("finite values and a positive mass all over the stack, at the operating point"),
             ));
         }
         Ok(stack)
@@ -233,7 +244,11 @@ impl Stack {
 }
 
 fn diagonal(entries: Vec<f64>) -> Hermitian<f64> {
-    if entries.iter().all(|&x| x == 0.0) { Hermitian::Zero(entries.len()) } else { Hermitian::Diagonal(entries) }
+    if entries.iter().all(|&x| x == 0.0) {
+        Hermitian::Zero(entries.len())
+    } else {
+        Hermitian::Diagonal(entries)
+    }
 }
 
 impl Model<f64> for Stack {
