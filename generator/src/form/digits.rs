@@ -45,7 +45,7 @@ pub fn written(value: f64, uncertainty: f64) -> f64 {
 /// its further digits never shows.
 #[must_use]
 pub fn written_uncertainty(value: f64) -> f64 {
-    if !(value > 0.0) || !value.is_finite() {
+    if value <= 0.0 || !value.is_finite() {
         return value;
     }
     let text = format!("{value:.1e}");

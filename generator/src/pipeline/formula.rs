@@ -236,7 +236,7 @@ pub(super) fn outcome(
             value: formula.value,
             form: proposed.written,
             series: std::array::from_fn(|k| form::written(sum.series[k], sum.uncertainty[k])),
-            uncertainty: sum.uncertainty.map(|u| form::written_uncertainty(u)),
+            uncertainty: sum.uncertainty.map(form::written_uncertainty),
             zero_by_symmetry: (1..5).filter(|&k| sum.zero[k].is_some()).collect(),
             tolerance: formula.tolerance,
             valid: valid(spec, &ranged),

@@ -36,22 +36,18 @@ impl Element {
     pub fn value(&self, values: &[f64], x: f64) -> f64 {
         // Barycentric form; for the open element of the function without its
         // exponential, which is put back at the end.
-        let n = self.nodes.len();
+        let scale = if self.open { 0.25 * self.nodes.len() as f64 } else { 0.5 };
         let weight = |node: f64| if self.open { libm::exp(0.5 * (node - x)) } else { 1.0 };
         let (mut above, mut below) = (0.0, 0.0);
-        for j in 0..n {
-            let gap = x - self.nodes[j];
+        for (j, (&here, &value)) in self.nodes.iter().zip(values).enumerate() {
+            let gap = x - here;
             if gap == 0.0 {
-                return values[j];
+                return value;
             }
-            let mut barycentric = 1.0;
-            for (i, node) in self.nodes.iter().enumerate() {
-                if i != j {
-                    // The scale keeps the product in range and cancels in the quotient.
-                    barycentric *= if self.open { 0.25 * n as f64 } else { 0.5 } / (self.nodes[j] - node);
-                }
-            }
-            above += barycentric / gap * values[j] * weight(self.nodes[j]);
+            // The scale keeps the product in range and cancels in the quotient.
+            let others = self.nodes.iter().enumerate().filter(|&(i, _)| i != j);
+            let barycentric = others.fold(1.0, |product, (_, node)| product * (scale / (here - node)));
+            above += barycentric / gap * value * weight(here);
             below += barycentric / gap;
         }
         above / below

@@ -178,7 +178,7 @@ impl Mesh {
     /// An empty stack, which the spec stage refuses before.
     pub fn new(layers: &Layers, request: &Request<'_>, decay: Option<Decay>) -> Result<Self> {
         let total: f64 = layers.stack.iter().map(|layer| layer.thickness).sum();
-        if layers.stack.is_empty() || !(total > 0.0) {
+        if layers.stack.is_empty() || total.is_nan() || total <= 0.0 {
             return Err(Error::internal("an empty stack reached the model"));
         }
         let degree = DEGREE + 2 * request.refinement;
@@ -282,20 +282,19 @@ impl Mesh {
             let rows: Vec<Option<usize>> = (0..n).map(|local| piece.unknown(local)).collect();
             let factors: Vec<f64> =
                 (0..n).map(|k| piece.element.weights[k] * piece.stiffness(k) / piece.jacobian).collect();
-            for i in 0..n {
-                let Some(row) = rows[i] else { continue };
-                for j in 0..n {
-                    let Some(column) = rows[j] else { continue };
-                    if column > row {
-                        continue;
+            let slopes = &piece.element.derivative;
+            for (i, row) in rows.iter().enumerate() {
+                let Some(row) = *row else { continue };
+                for (j, column) in rows.iter().enumerate() {
+                    let Some(column) = *column else { continue };
+                    if column <= row {
+                        let sum: f64 = factors
+                            .iter()
+                            .enumerate()
+                            .map(|(k, f)| f * slopes[k * n + i] * slopes[k * n + j])
+                            .sum();
+                        band.add(row, column, sum / (roots[row] * roots[column]));
                     }
-                    let mut sum = 0.0;
-                    for k in 0..n {
-                        sum += factors[k]
-                            * piece.element.derivative[k * n + i]
-                            * piece.element.derivative[k * n + j];
-                    }
-                    band.add(row, column, sum / (roots[row] * roots[column]));
                 }
             }
         }
