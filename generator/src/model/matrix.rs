@@ -75,10 +75,10 @@ fn choose(n: usize, k: usize) -> f64 {
 fn stored<T: Scalar>(matrix: DMatrix<T>) -> Hermitian<T> {
     let order = matrix.nrows();
     let off_diagonal = (0..order)
-        .any(|row| (0..order).any(|column| row != column && matrix[(row, column)].modulus_squared() != 0.0));
+        .any(|row| (0..order).any(|column| row != column && matrix[(row, column)] != T::zero()));
     if off_diagonal {
         Hermitian::Dense(matrix)
-    } else if matrix.iter().all(|x| x.modulus_squared() == 0.0) {
+    } else if matrix.iter().all(|x| *x == T::zero()) {
         Hermitian::Zero(order)
     } else {
         Hermitian::Diagonal((0..order).map(|idx| matrix[(idx, idx)].real()).collect())
@@ -167,7 +167,7 @@ impl<T: Scalar> Model<T> for Polynomial<T> {
 /// reversal of their order, under which the coefficient of `d^k` is multiplied by
 /// `(-1)^k`, exact to the last bit. `h` are all coefficients of the expansion.
 fn parity<T: Scalar>(h: &[DMatrix<T>]) -> Option<String> {
-    if h.iter().skip(1).step_by(2).all(|odd| odd.iter().all(|x| x.modulus_squared() == 0.0)) {
+    if h.iter().skip(1).step_by(2).all(|odd| odd.iter().all(|x| *x == T::zero())) {
         return Some("only even powers of the offset stand in the matrices".into());
     }
     let order = h.first()?.nrows();
@@ -191,7 +191,7 @@ fn signs<T: Scalar>(h: &[DMatrix<T>], image: &dyn Fn(usize) -> usize) -> bool {
         let mut wanted = None;
         for (k, matrix) in h.iter().enumerate() {
             let (here, there) = (matrix[(row, column)], matrix[(image(row), image(column))]);
-            if here.modulus_squared() == 0.0 && there.modulus_squared() == 0.0 {
+            if here == T::zero() && there == T::zero() {
                 continue;
             }
             let even = k % 2 == 0;
