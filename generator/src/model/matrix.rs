@@ -74,8 +74,8 @@ fn choose(n: usize, k: usize) -> f64 {
 /// A dense matrix in the cheapest storage that holds it.
 fn stored<T: Scalar>(matrix: DMatrix<T>) -> Hermitian<T> {
     let order = matrix.nrows();
-    let off_diagonal = (0..order)
-        .any(|row| (0..order).any(|column| row != column && matrix[(row, column)] != T::zero()));
+    let off_diagonal =
+        (0..order).any(|row| (0..order).any(|column| row != column && matrix[(row, column)] != T::zero()));
     if off_diagonal {
         Hermitian::Dense(matrix)
     } else if matrix.iter().all(|x| *x == T::zero()) {
