@@ -274,6 +274,24 @@ mod tests {
         out
     }
 
+    /// Size of the first terms with negative powers on a circle, which vanish
+    /// unless a pole lies inside.
+    fn principal_part(tree: &Tree, at: f64, radius: f64) -> f64 {
+        let points = 64;
+        let mut out = [Complex::new(0.0, 0.0); 4];
+        for point in 0..points {
+            let angle = 2.0 * std::f64::consts::PI * (f64::from(point) + 0.5) / f64::from(points);
+            let turn = Complex::new(libm::cos(angle), libm::sin(angle));
+            let any = Complex::new(0.7, 0.0);
+            let value = Complex::evaluate(tree, &(turn * radius + at), &any, &any);
+            for (k, slot) in out.iter_mut().enumerate() {
+                let power = i32::try_from(k).unwrap() + 1;
+                *slot += value * ComplexField::powi(turn, power) / f64::from(points);
+            }
+        }
+        out.iter().fold(0.0f64, |most, c| most.max(ComplexField::modulus(*c)))
+    }
+
     fn trees() -> impl Strategy<Value = Tree> {
         let leaf = prop_oneof![
             3 => Just(Tree::Control),
@@ -306,6 +324,7 @@ mod tests {
             // Where the two circles disagree, a singularity or branch cut is too near for the check.
             prop_assume!(size.is_finite() && size < 1e6);
             prop_assume!(near.iter().zip(far).all(|(a, b)| (a - b).abs() <= 1e-8 * size.max(1.0)));
+            prop_assume!(principal_part(&tree, at, 0.04) <= 1e-9 * size.max(1.0));
             let series = tree.taylor(at, 0.7);
             // A real logarithm or root may have no value where the complex one has.
             prop_assume!(tree.value(at, 0.7).is_finite());
