@@ -9,11 +9,12 @@
 //!
 //! Not here: where matrices come from, and what a level means.
 
+mod banded;
 mod hermitian;
 mod solve;
 
 pub use hermitian::{Banded, Hermitian};
-pub use solve::{Eigenpair, Factor, eigenpair, eigenpair_near, factor, lowest, reduced_solve, spectrum};
+pub use solve::{isolated, Eigenpair, Factor, eigenpair, eigenpair_near, factor, lowest, reduced_solve, spectrum};
 
 use nalgebra::{Complex, ComplexField};
 

@@ -1,9 +1,11 @@
 //! Eigenpairs, inertia and resolvents of a [`Hermitian`] matrix.
 //!
-//! First version: everything through a dense eigendecomposition.
+//! Bands go through [`banded`](super::banded), at a cost linear in their order;
+//! everything else through a full eigendecomposition.
 
 use nalgebra::{DMatrix, SymmetricEigen};
 
+use super::banded::{BandFactor, Ladder, Pencil};
 use super::{Hermitian, Scalar, State};
 use crate::diagnostic::{Error, Result};
 
@@ -20,29 +22,39 @@ pub struct Eigenpair<T: Scalar> {
 
 /// Factors of `H - shift`.
 #[derive(Clone, Debug)]
-pub struct Factor<T: Scalar> {
-    shift: f64,
-    energies: Vec<f64>,
-    states: DMatrix<T>,
+pub struct Factor<T: Scalar>(Kind<T>);
+
+#[derive(Clone, Debug)]
+enum Kind<T: Scalar> {
+    Whole { shift: f64, energies: Vec<f64>, states: DMatrix<T> },
+    Band(BandFactor<T>),
 }
 
 impl<T: Scalar> Factor<T> {
     /// Number of levels below the shift.
     #[must_use]
     pub fn below(&self) -> usize {
-        self.energies.iter().filter(|&&e| e < self.shift).count()
+        match &self.0 {
+            Kind::Whole { shift, energies, .. } => energies.iter().filter(|&e| e < shift).count(),
+            Kind::Band(factor) => factor.below(),
+        }
     }
 
     /// Solves `(H - shift) x = right`.
     #[must_use]
     pub fn solve(&self, right: &State<T>) -> State<T> {
-        let mut out = State::zeros(right.len());
-        for (idx, &energy) in self.energies.iter().enumerate() {
-            let column = self.states.column(idx);
-            let amount = column.dotc(right).unscale(energy - self.shift);
-            out.axpy(amount, &column, T::one());
+        match &self.0 {
+            Kind::Whole { shift, energies, states } => {
+                let mut out = State::zeros(right.len());
+                for (idx, &energy) in energies.iter().enumerate() {
+                    let column = states.column(idx);
+                    let amount = column.dotc(right).unscale(energy - shift);
+                    out.axpy(amount, &column, T::one());
+                }
+                out
+            }
+            Kind::Band(factor) => factor.solve(right),
         }
-        out
     }
 }
 
@@ -76,13 +88,16 @@ pub fn spectrum<T: Scalar>(matrix: &Hermitian<T>) -> Result<Vec<Eigenpair<T>>> {
 /// # Errors
 /// As [`spectrum`].
 pub fn factor<T: Scalar>(matrix: &Hermitian<T>, shift: f64) -> Result<Factor<T>> {
+    if let Hermitian::Banded(band) = matrix {
+        return Ok(Factor(Kind::Band(Pencil::new(band)?.factor(shift))));
+    }
     let pairs = spectrum(matrix)?;
     let order = pairs.len();
-    Ok(Factor {
+    Ok(Factor(Kind::Whole {
         shift,
         energies: pairs.iter().map(|pair| pair.energy).collect(),
         states: DMatrix::from_fn(order, order, |row, column| pairs[column].state[row]),
-    })
+    }))
 }
 
 /// The lowest `count` levels, fewer if the matrix is smaller.
@@ -90,6 +105,9 @@ pub fn factor<T: Scalar>(matrix: &Hermitian<T>, shift: f64) -> Result<Factor<T>>
 /// # Errors
 /// As [`spectrum`].
 pub fn lowest<T: Scalar>(matrix: &Hermitian<T>, count: usize) -> Result<Vec<Eigenpair<T>>> {
+    if let Hermitian::Banded(band) = matrix {
+        return Ladder::new(band)?.lowest(count);
+    }
     let mut pairs = spectrum(matrix)?;
     pairs.truncate(count);
     Ok(pairs)
@@ -101,6 +119,12 @@ pub fn lowest<T: Scalar>(matrix: &Hermitian<T>, count: usize) -> Result<Vec<Eige
 /// # Errors
 /// As [`spectrum`]; `number` beyond the order is an internal error.
 pub fn eigenpair<T: Scalar>(matrix: &Hermitian<T>, number: usize) -> Result<Eigenpair<T>> {
+    if number == 0 || number > matrix.order() {
+        return Err(Error::internal("a level beyond the order of its matrix was asked for"));
+    }
+    if let Hermitian::Banded(band) = matrix {
+        return Ladder::new(band)?.level(number, &[]);
+    }
     spectrum(matrix)?
         .into_iter()
         .nth(number.wrapping_sub(1))
@@ -118,12 +142,50 @@ pub fn eigenpair_near<T: Scalar>(
     guess: &State<T>,
 ) -> Result<Eigenpair<T>> {
     let _ = energy;
+    if let Hermitian::Banded(band) = matrix
+        && let Some(pair) = Ladder::new(band)?.near(guess)
+    {
+        return Ok(pair);
+    }
     spectrum(matrix)?
         .into_iter()
         .max_by(|a, b| {
             a.state.dotc(guess).modulus_squared().total_cmp(&b.state.dotc(guess).modulus_squared())
         })
         .ok_or_else(|| Error::internal("a matrix of order 0"))
+}
+
+/// The level with this number, found from a nearby state, and a lower bound of its
+/// distance from its nearest neighbour (within a fifth; exact for full
+/// decompositions). `hint` is a guess of that distance; `None` asks for no distance
+/// and gives 0.
+///
+/// # Errors
+/// As [`spectrum`].
+pub fn isolated<T: Scalar>(
+    matrix: &Hermitian<T>,
+    number: usize,
+    guess: &State<T>,
+    hint: Option<f64>,
+) -> Result<(Eigenpair<T>, f64)> {
+    if let Hermitian::Banded(band) = matrix {
+        let mut ladder = Ladder::new(band)?;
+        let pair = match ladder.near(guess).filter(|pair| pair.number == number) {
+            Some(pair) => pair,
+            None => ladder.level(number, &[])?,
+        };
+        let gap = hint.map_or(0.0, |hint| ladder.gap(&pair, hint));
+        return Ok((pair, gap));
+    }
+    let pairs = spectrum(matrix)?;
+    let pair = pairs.get(number.wrapping_sub(1)).cloned();
+    let pair = pair.ok_or_else(|| Error::internal("a followed level is beyond the order of its matrix"))?;
+    let gap = pairs
+        .iter()
+        .filter(|other| other.number != number)
+        .map(|other| (other.energy - pair.energy).abs())
+        .fold(f64::INFINITY, f64::min);
+    Ok((pair, gap))
 }
 
 /// The reduced resolvent: the solution of `(H - energy) x = right` orthogonal
@@ -139,6 +201,9 @@ pub fn reduced_solve<T: Scalar>(
     model_space: &[State<T>],
     right: &State<T>,
 ) -> Result<State<T>> {
+    if let Hermitian::Banded(band) = matrix {
+        return Ok(Ladder::new(band)?.reduced(energy, model_space, right));
+    }
     let mut clean = right.clone();
     let project = |state: &mut State<T>| {
         for member in model_space {

@@ -23,6 +23,9 @@ pub(super) const LISTED: usize = 12;
 /// makes the sum over states complete. Beyond, a few levels and solves cost less (empirical).
 const WHOLE: usize = 600;
 
+/// The same for a band, whose lowest levels cost little one by one.
+const WHOLE_BAND: usize = 64;
+
 /// A gap above the degeneracy threshold, but below this many times it, decides
 /// nothing reliably and is refused.
 const UNSURE: f64 = 1000.0;
@@ -193,7 +196,8 @@ impl<T: Scalar> Set<T> {
         }
         let matrix = model.expansion(0);
         let same = model.degeneracy_scale();
-        let whole = order <= WHOLE;
+        let limit = if matches!(matrix, Hermitian::Banded(_)) { WHOLE_BAND } else { WHOLE };
+        let whole = order <= limit;
         let mut count = if whole { order } else { LISTED.max(number.saturating_add(2)).min(order) };
         loop {
             let pairs = if whole { spectrum(matrix)? } else { lowest(matrix, count)? };
