@@ -167,7 +167,9 @@ impl<'a, T: Scalar> Pencil<'a, T> {
             let entries = &self.band.entries[row * (w + 1) + w - (row - from)..(row + 1) * (w + 1)];
             let here = source[row];
             let mut sum = T::zero();
-            for ((element, there), slot) in entries[..row - from].iter().zip(&source[from..row]).zip(&mut target[from..row]) {
+            for ((element, there), slot) in
+                entries[..row - from].iter().zip(&source[from..row]).zip(&mut target[from..row])
+            {
                 sum += *element * *there;
                 *slot += element.conjugate() * here;
             }
@@ -239,7 +241,9 @@ impl<'a, T: Scalar> Pencil<'a, T> {
             word ^= word << 13;
             word ^= word >> 7;
             word ^= word << 17;
-            T::from_real(0.5 + (word >> 11) as f64 / (1_u64 << 53) as f64 * if word & 1 == 0 { 1.0 } else { -1.0 })
+            T::from_real(
+                0.5 + (word >> 11) as f64 / (1_u64 << 53) as f64 * if word & 1 == 0 { 1.0 } else { -1.0 },
+            )
         })
     }
 }
@@ -280,7 +284,11 @@ impl<'a, T: Scalar> Ladder<'a, T> {
     /// The closest known bracket of a level: shifts below and above it with their counts.
     fn bracket(&self, number: usize) -> ((f64, usize), (f64, usize)) {
         let place = self.rungs.partition_point(|rung| rung.1 < number);
-        let low = place.checked_sub(1).and_then(|idx| self.rungs.get(idx)).copied().unwrap_or((-self.pencil.norm, 0));
+        let low = place
+            .checked_sub(1)
+            .and_then(|idx| self.rungs.get(idx))
+            .copied()
+            .unwrap_or((-self.pencil.norm, 0));
         let high = self.rungs.get(place).copied().unwrap_or((self.pencil.norm, self.pencil.band.order));
         (low, high)
     }
@@ -337,8 +345,11 @@ impl<'a, T: Scalar> Ladder<'a, T> {
                     }
                     x.unscale_mut(size);
                 }
-                let cluster: Vec<Eigenpair<T>> =
-                    found.iter().filter(|other| (other.energy - middle).abs() <= 100.0 * narrow.max(width)).cloned().collect();
+                let cluster: Vec<Eigenpair<T>> = found
+                    .iter()
+                    .filter(|other| (other.energy - middle).abs() <= 100.0 * narrow.max(width))
+                    .cloned()
+                    .collect();
                 if let Some((energy, residual, state)) = self.pencil.polish(x, &cluster) {
                     let slack = residual.max(narrow);
                     if stuck || (energy > low.0 - slack && energy < high.0 + slack) {
@@ -399,7 +410,8 @@ impl<'a, T: Scalar> Ladder<'a, T> {
             return f64::INFINITY;
         }
         let narrow = 8.0 * f64::EPSILON * self.pencil.norm;
-        let mut g = if hint.is_finite() && hint > narrow { hint } else { pair.energy.abs().max(1e3 * narrow) };
+        let mut g =
+            if hint.is_finite() && hint > narrow { hint } else { pair.energy.abs().max(1e3 * narrow) };
         let (mut good, mut bad) = (0.0, f64::INFINITY);
         for _ in 0..60 {
             if alone(g, self) {

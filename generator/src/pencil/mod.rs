@@ -14,7 +14,9 @@ mod hermitian;
 mod solve;
 
 pub use hermitian::{Banded, Hermitian};
-pub use solve::{isolated, Eigenpair, Factor, eigenpair, eigenpair_near, factor, lowest, reduced_solve, spectrum};
+pub use solve::{
+    Eigenpair, Factor, eigenpair, eigenpair_near, factor, isolated, lowest, reduced_solve, spectrum,
+};
 
 use nalgebra::{Complex, ComplexField};
 
