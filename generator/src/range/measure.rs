@@ -1,187 +1,68 @@
-//! A form held against a followed quantity.
-//!
-//! An interval is accepted only if a bound of the whole error on it is within
-//! the tolerance; else it is halved, the inner half first. So the first
-//! violation outwards is found, however narrow, and nothing is judged by samples.
+//! The range of a form, with its error budget and samples.
 
-use super::follow::{Side, Stop, chebyshev_points, solve, walk};
-use super::{Candidate, Limit, Ranged, Request, Sample};
+use super::follow::Stop;
+use super::followed::{Followed, Track};
+use super::interpolant::chebyshev_points;
+use super::view::View;
+use super::{Candidate, Limit, Ranged, Sample};
 use crate::diagnostic::{Diagnostic, Error, Result};
-use crate::form::{Form, horner};
 use crate::outcome::Note;
-use crate::series::AnyLevel;
 use crate::with_level;
 
-/// Degree at which a residual is expanded, above that of every interpolant.
-const DEGREE: usize = 32;
-/// Part of the tolerance to which each level is interpolated.
-const ACCURACY: f64 = 1e-8;
-/// Width, in parts of the search, below which an interval is not halved any more.
-const NARROWEST: f64 = 1e-13;
-/// Intervals of the scans for maxima and for meetings.
+/// Intervals of the scan for maxima.
 const SCAN: usize = 200;
+/// Solves that look for another level beyond the range's end.
+const LOOKS: usize = 48;
+/// Levels above the followed one among which that is looked for.
+const NEIGHBOURS: usize = 8;
+/// Relative distance from the tolerance at which an error grazes it.
+const GRAZING: f64 = 1e-6;
+/// Part of the range by which the ends for two tolerances that far apart differ at most
+/// where the error rises through them.
+const STEEP: f64 = 1e-2;
 
-struct Track {
-    times: f64,
-    system: String,
-    level: AnyLevel,
-    sides: [Side; 2],
+/// One end of a range.
+struct End {
+    x: f64,
+    limit: Limit,
+    fails: Option<f64>,
 }
 
-/// An exact quantity followed outwards on both sides of the operating point.
-pub struct Followed<'a> {
-    at: f64,
-    within: (f64, f64),
-    tolerance: f64,
-    base: f64,
-    known_change: &'a dyn Fn(f64) -> f64,
-    tracks: Vec<Track>,
-    cosines: Vec<f64>,
-}
-
-/// Follows every level of a sum to `at + 2 (end of within - at)` on both sides, or to
-/// where it meets another level or the escape edge.
-///
-/// # Errors
-/// Those of the eigenvalue solves.
-pub fn follow<'a>(request: &Request<'a>) -> Result<Followed<'a>> {
-    let Request { at, within, tolerance, base, .. } = *request;
-    let share = request.terms.len().max(1) as f64;
-    let tracks = request
-        .terms
-        .iter()
-        .map(|term| {
-            let margin = tolerance / term.times.abs();
-            let side = |end: f64| -> Result<Side> {
-                let reach = at + 2.0 * (end - at);
-                with_level!(term.level, level => walk(level, reach, ACCURACY * margin / share, margin))
-            };
-            let sides = [side(within.0)?, side(within.1)?];
-            Ok(Track { times: term.times, system: term.system.to_owned(), level: term.level.clone(), sides })
-        })
-        .collect::<Result<Vec<_>>>()?;
-    let turn = core::f64::consts::PI / DEGREE as f64;
-    let cosines = (0..2 * DEGREE).map(|k| libm::cos(turn * k as f64)).collect();
-    Ok(Followed { at, within, tolerance, base, known_change: request.known_change, tracks, cosines })
-}
-
-impl Followed<'_> {
-    fn interpolated(&self, x: f64) -> Option<(f64, f64)> {
-        let side = usize::from(x >= self.at);
-        let (mut sum, mut doubt) = (self.base + (self.known_change)(x), 0.0);
-        if x != self.at {
-            for track in &self.tracks {
-                let (change, bound) = track.sides.get(side)?.change(x)?;
-                sum += track.times * change;
-                doubt += track.times.abs() * bound;
-            }
-        }
-        Some((sum, doubt))
-    }
-
-    /// The quantity at `control`, interpolated; NaN where it was not followed to.
-    #[must_use]
-    pub fn value(&self, control: f64) -> f64 {
-        self.interpolated(control).map_or(f64::NAN, |found| found.0)
-    }
-
-    /// The quantity at `control` by a solve of its own.
-    ///
-    /// # Errors
-    /// Those of the eigenvalue solve.
-    pub fn exact(&self, control: f64) -> Result<f64> {
-        let mut sum = self.base + (self.known_change)(control);
-        for track in &self.tracks {
-            sum += track.times * with_level!(&track.level, level => solve(level, control)?.0);
-        }
-        Ok(sum)
-    }
-
-    /// Form minus quantity: infinite where the form has no value.
-    fn residual(&self, form: &Form, x: f64) -> f64 {
-        let d = x - self.at;
-        if matches!(form, Form::Paired { half_gap_squared, .. } if horner(half_gap_squared, d) < 0.0) {
-            return f64::INFINITY;
-        }
-        form.value(d) - self.value(x)
-    }
-
-    fn extra(&self, candidate: &Candidate, x: f64) -> f64 {
-        let d = x - self.at;
-        (candidate.numerical)(d) + (candidate.written)(d)
-    }
-
-    /// True if the whole error is proved to be within the tolerance from `a` to `b`.
-    fn holds(&self, candidate: &Candidate, rounding: f64, a: f64, b: f64) -> bool {
-        let nodes = chebyshev_points(a, b, DEGREE);
-        let values: Vec<f64> = nodes.iter().map(|&x| self.residual(candidate.form, x)).collect();
-        let other = nodes.iter().map(|&x| self.extra(candidate, x)).fold(0.0, f64::max);
-        let doubt = nodes
-            .iter()
-            .map(|&x| self.interpolated(x).map_or(f64::INFINITY, |found| found.1))
-            .fold(0.0, f64::max);
-        let mut sum = 0.0;
-        for order in 0..=DEGREE {
-            let mut coefficient = 0.0;
-            for (k, value) in values.iter().enumerate() {
-                let half = if k == 0 || k == DEGREE { 0.5 } else { 1.0 };
-                let cosine = self.cosines.get(order * k % (2 * DEGREE)).copied().unwrap_or(f64::NAN);
-                coefficient += half * value * cosine;
-            }
-            let half = if order == 0 || order == DEGREE { 0.5 } else { 1.0 };
-            // The tail of a form that is no polynomial is as large as its last terms.
-            let tail = if order + 2 > DEGREE { 2.0 } else { 1.0 };
-            sum += tail * half * coefficient.abs() * 2.0 / DEGREE as f64;
-        }
-        sum + other + doubt + rounding <= self.tolerance
-    }
-
-    /// First control value from `at` towards `to` beyond which the tolerance is not kept.
-    fn first(&self, candidate: &Candidate, rounding: f64, to: f64) -> Option<f64> {
-        let side = usize::from(to >= self.at);
-        let span = (to - self.at).abs();
-        let inside = |x: f64| (x - self.at).abs() < span;
-        let mut cuts: Vec<f64> = self
-            .tracks
-            .iter()
-            .filter_map(|track| track.sides.get(side))
-            .flat_map(|side| side.pieces.iter().map(|piece| piece.to))
-            .filter(|&x| inside(x))
-            .collect();
-        cuts.push(to);
-        cuts.sort_by(|a, b| (b - self.at).abs().total_cmp(&(a - self.at).abs()));
-        cuts.dedup();
-        let mut from = self.at;
-        // The outermost end is at the bottom; each pass takes or halves the next interval.
-        while let Some(&end) = cuts.last() {
-            if self.holds(candidate, rounding, from, end) {
-                from = end;
-                cuts.pop();
-            } else if (end - from).abs() <= NARROWEST * span {
-                return Some(from);
-            } else {
-                cuts.push(0.5 * (from + end));
-            }
-        }
-        None
+impl View<'_> {
+    fn tolerance(&self) -> f64 {
+        self.followed.tolerance
     }
 
     /// True if from `from` to `to` the form comes within the tolerance of the sum with
     /// one level replaced by another of its block. Energies counted by number are
     /// continuous, so a change of sign between two solves is proof.
-    fn meets_other(&self, form: &Form, from: f64, to: f64) -> Result<bool> {
-        let numbers: Vec<usize> = self.tracks.iter().map(|track| track.level.number()).collect();
-        let mut before: Vec<Vec<f64>> = vec![Vec::new(); self.tracks.len()];
-        for k in 1..=SCAN / 2 {
-            let x = from + (to - from) * k as f64 / (SCAN / 2) as f64;
-            let off = form.value(x - self.at) - self.exact(x)?;
-            for ((track, &number), before) in self.tracks.iter().zip(&numbers).zip(&mut before) {
-                let energies = with_level!(&track.level, level => solve(level, x)?.2);
-                let own = energies.get(number.wrapping_sub(1)).copied().unwrap_or(f64::NAN);
+    fn meets_other(&self, from: f64, to: f64) -> Result<bool> {
+        let followed = self.followed;
+        let at_side = followed.side(to);
+        let mut before: Vec<Vec<f64>> = vec![Vec::new(); followed.tracks.len()];
+        for k in 1..=LOOKS {
+            let x = from + (to - from) * k as f64 / LOOKS as f64;
+            if !(followed.known_change)(x).is_finite() {
+                return Ok(false);
+            }
+            let mut off =
+                self.candidate.form.value(x - followed.at) - followed.base - (followed.known_change)(x);
+            let mut seen = Vec::with_capacity(followed.tracks.len());
+            for (track, sides) in followed.tracks.iter().zip(&self.sides) {
+                let side = &sides[at_side];
+                let Some((number, own, energies)) = others(track, side, x)? else {
+                    return Ok(false);
+                };
+                off -= track.times * own;
+                seen.push((number, own, energies));
+            }
+            for ((track, before), (number, own, energies)) in
+                followed.tracks.iter().zip(&mut before).zip(&seen)
+            {
                 let away: Vec<f64> = energies.iter().map(|e| off - track.times * (e - own)).collect();
                 let met = away.iter().enumerate().any(|(j, &now)| {
-                    j + 1 != number
-                        && (now.abs() <= self.tolerance
+                    j + 1 != *number
+                        && (now.abs() <= self.tolerance()
                             || before.get(j).is_some_and(|&then| (then < 0.0) != (now < 0.0)))
                 });
                 if met {
@@ -193,57 +74,107 @@ impl Followed<'_> {
         Ok(false)
     }
 
-    fn end(
-        &self,
-        candidate: &Candidate,
-        upper: bool,
-        notes: &mut Vec<Note>,
-    ) -> Result<(f64, Limit, Option<f64>)> {
-        let side = usize::from(upper);
-        let wanted = if upper { self.within.1 } else { self.within.0 };
-        if wanted == self.at {
-            return Ok((wanted, Limit::Within, None));
+    /// An end brought from the interpolants' accuracy to that of exact solves.
+    fn polished(&self, end: f64, rounding: f64) -> Result<f64> {
+        let at = self.followed.at;
+        if end == at || self.in_window(end) {
+            return Ok(end);
         }
-        let mut covered = (self.at + 2.0 * (wanted - self.at), Stop::Reached, "");
-        for track in &self.tracks {
-            if let Some(side) = track.sides.get(side)
-                && (side.end - self.at).abs() < (covered.0 - self.at).abs()
-            {
-                covered = (side.end, side.stop, &track.system);
+        let step = 1e-5 * (end - at);
+        let excess = |residual: f64, x: f64| residual.abs() + self.extra(x) + rounding - self.tolerance();
+        let rise = (excess(self.residual(end), end) - excess(self.residual(end - step), end - step)) / step;
+        let mut x = end;
+        for _ in 0..2 {
+            let exact = self.candidate.form.value(x - at) - self.exact(x)?;
+            let next = x - excess(exact, x) / rise;
+            // Beyond this the interpolant was not what Newton's step takes it for.
+            if !next.is_finite() || (next - end).abs() > step.abs() {
+                return Ok(end);
+            }
+            x = next;
+        }
+        Ok(x)
+    }
+
+    /// Where the error first touches the tolerance from inside without clearly passing it.
+    fn graze(&self, rounding: f64, found: Option<f64>, covered: f64) -> Option<f64> {
+        let at = self.followed.at;
+        let below = self.first(rounding, self.tolerance() * (1.0 - GRAZING), covered)?;
+        let far = |x: Option<f64>| x.is_none_or(|x| (x - below).abs() > STEEP * (below - at).abs());
+        if far(found) {
+            return Some(below);
+        }
+        let above = self.first(rounding, self.tolerance() * (1.0 + GRAZING), covered);
+        if far(above) { found } else { None }
+    }
+
+    fn end(&self, upper: bool, notes: &mut Vec<Note>) -> Result<End> {
+        let followed = self.followed;
+        let at = followed.at;
+        let side = usize::from(upper);
+        let wanted = if upper { followed.within.1 } else { followed.within.0 };
+        if wanted == at {
+            return Ok(End { x: wanted, limit: Limit::Within, fails: None });
+        }
+        let covered = self.covered(side);
+        let beyond = |x: f64| (x - at).abs() >= (wanted - at).abs();
+        let plain = self.first(0.0, self.tolerance(), covered);
+        let rounding = self.candidate.rounding;
+        let mut found = if rounding > 0.0 { self.first(rounding, self.tolerance(), covered) } else { plain };
+        let touched = self.graze(rounding, found, covered);
+        if let Some(x) = touched {
+            found = Some(x);
+            if !beyond(x) {
+                let text = format!("the error touches the tolerance at {x} within a millionth of it");
+                notes.push(Note { code: "grazing".to_owned(), text });
             }
         }
-        let beyond = |x: f64| (x - self.at).abs() >= (wanted - self.at).abs();
-        let plain = self.first(candidate, 0.0, covered.0);
-        let found = if candidate.rounding > 0.0 {
-            self.first(candidate, candidate.rounding, covered.0)
-        } else {
-            plain
-        };
         if let Some(x) = found.filter(|&x| !beyond(x)) {
-            let next = x + (wanted - self.at) * 1e-9;
-            let limit = if !(self.known_change)(next).is_finite() {
+            let next = x + (wanted - at) * 1e-9;
+            let limit = if !(followed.known_change)(next).is_finite() {
                 Limit::Undefined
-            } else if self.residual(candidate.form, next) == f64::INFINITY {
+            } else if self.residual(next) == f64::INFINITY {
                 Limit::HalfGap
-            } else if plain.is_none_or(beyond) {
+            } else if rounding > 0.0 && plain.is_none_or(beyond) {
                 Limit::Rounding
-            } else if self.meets_other(candidate.form, x, wanted)? {
+            } else if self.meets_other(x, wanted)? {
                 Limit::Crossing
             } else {
                 Limit::Remainder
             };
-            return Ok((x, limit, Some(x)));
+            let steep = matches!(limit, Limit::Crossing | Limit::Remainder | Limit::Rounding);
+            let x = if steep && touched.is_none() { self.polished(x, rounding)? } else { x };
+            // Polishing may move an end that is the wanted one across it.
+            let x = if beyond(x) { wanted } else { x };
+            return Ok(End { x, limit, fails: Some(x) });
         }
-        if beyond(covered.0) {
-            return Ok((wanted, Limit::Within, plain));
+        if beyond(covered) {
+            let fails = match plain {
+                Some(x) => Some(self.polished(x, 0.0)?),
+                None => None,
+            };
+            return Ok(End { x: wanted, limit: Limit::Within, fails });
         }
-        match covered {
-            (x, Stop::Meeting(gap), system) => {
-                if x == self.at || !self.meets_other(candidate.form, x, wanted)? {
+        self.uncovered(side, covered, wanted, notes)
+    }
+
+    /// The end of a range where a walk ended first.
+    fn uncovered(&self, side: usize, x: f64, wanted: f64, notes: &mut Vec<Note>) -> Result<End> {
+        let at = self.followed.at;
+        let stopped = self
+            .followed
+            .tracks
+            .iter()
+            .zip(&self.sides)
+            .find(|(_, sides)| sides[side].end == x)
+            .map(|(track, sides)| (track.system.as_str(), sides[side].stop));
+        let limit = match stopped {
+            Some((system, Stop::Meeting(gap))) => {
+                if x == at || !self.meets_other(x, wanted)? {
                     return Err(Error::accuracy(
                         Diagnostic::new(
                             "range-not-covered",
-                            format!("the level of `{system}` cannot be told from its neighbour beyond {x}"),
+                            format!("the level of `{system}` cannot be told from its neighbours beyond {x}"),
                         )
                         .found(format!("levels {gap:e} apart there, in the model's unit"))
                         .expected("levels far enough apart to prove which is which")
@@ -255,49 +186,104 @@ impl Followed<'_> {
                 let text =
                     format!("another level of `{system}` is met at {x}, gap {gap:e} in the model's unit");
                 notes.push(Note { code: "crossing".to_owned(), text });
-                Ok((x, Limit::Crossing, Some(x)))
+                Limit::Crossing
             }
-            (x, _, _) => Ok((x, Limit::Escape, Some(x))),
-        }
+            Some((_, Stop::Undefined)) => Limit::Undefined,
+            _ => Limit::Escape,
+        };
+        Ok(End { x, limit, fails: (limit != Limit::Undefined).then_some(x) })
     }
 
+    /// Remarks on the way from one end to the other.
+    fn remarks(&self, from: f64, to: f64, notes: &mut Vec<Note>) {
+        for (track, sides) in self.followed.tracks.iter().zip(&self.sides) {
+            for side in sides {
+                for one in side.crossings.iter().filter(|one| one.x >= from && one.x <= to) {
+                    let text = format!(
+                        "the level of `{}` crosses from number {} of its block to {} at {}, gap {:e} in the formula's unit",
+                        track.system,
+                        one.numbers.0,
+                        one.numbers.1,
+                        one.x,
+                        track.times.abs() * one.gap
+                    );
+                    notes.push(Note { code: "crossing".to_owned(), text });
+                }
+                if side.sampled_from().is_some_and(|start| start >= from && start <= to) {
+                    let text = format!(
+                        "where several levels of `{}` meet, its level is carried from sample to sample by overlap; \
+                         what lies between the samples is estimated there, not bounded",
+                        track.system
+                    );
+                    let note = Note { code: "sampled".to_owned(), text };
+                    if !notes.contains(&note) {
+                        notes.push(note);
+                    }
+                }
+            }
+        }
+    }
+}
+
+/// Number and change of the followed level at `x`, and the changes of all levels
+/// near it by number; `None` where the Hamiltonian has no value.
+#[allow(clippy::type_complexity)] // one pass, one use
+fn others(track: &Track, side: &super::follow::Side, x: f64) -> Result<Option<(usize, f64, Vec<f64>)>> {
+    with_level!(&track.level, level => {
+        if !super::exact::defined(level, x) {
+            return Ok(None);
+        }
+        let ((number, _), own) = side.exact(level, x)?;
+        let solved = super::exact::solve(level, x, number + NEIGHBOURS)?;
+        let base = solved.get(number)?.energy - own;
+        Ok(Some((number, own, solved.pairs.iter().map(|pair| pair.energy - base).collect())))
+    })
+}
+
+impl Followed<'_> {
     /// The range on which the candidate keeps the tolerance, with its error budget.
     ///
     /// # Errors
     /// `Accuracy` if the tolerance is missed at the operating point, or if the wanted
     /// interval could not be covered by isolation discs.
-    pub fn measure(&self, candidate: &Candidate) -> Result<Ranged> {
-        let start = self.residual(candidate.form, self.at).abs()
-            + self.extra(candidate, self.at)
+    pub fn measure(&self, candidate: &Candidate<'_>) -> Result<Ranged> {
+        let at = self.at;
+        let start = (candidate.form.value(0.0) - self.base - (self.known_change)(at)).abs()
+            + (candidate.numerical)(0.0)
+            + (candidate.written)(0.0)
             + candidate.rounding;
         if start.is_nan() || start > self.tolerance {
             return Err(Error::accuracy(
                 Diagnostic::new("tolerance-missed", "the tolerance is missed at the operating point itself")
-                    .found(format!("an error of {start:e} at {}", self.at))
+                    .found(format!("an error of {start:e} at {at}"))
                     .expected(format!("at most {:e}", self.tolerance))
                     .action("allow a larger tolerance, or ask for a number format with more digits"),
             ));
         }
+        let view = View::new(self, candidate)?;
         let mut notes = Vec::new();
-        let (from, low, fails_below) = self.end(candidate, false, &mut notes)?;
-        let (to, high, fails_above) = self.end(candidate, true, &mut notes)?;
+        let low = view.end(false, &mut notes)?;
+        let high = view.end(true, &mut notes)?;
+        let (from, to) = (low.x, high.x);
+        view.remarks(from, to, &mut notes);
         let (mut remainder, mut numerical, mut written) = (0.0_f64, 0.0_f64, 0.0_f64);
         for x in chebyshev_points(from, to, SCAN) {
-            remainder = remainder.max(self.residual(candidate.form, x).abs());
-            numerical = numerical.max((candidate.numerical)(x - self.at));
-            written = written.max((candidate.written)(x - self.at));
+            remainder = remainder.max(view.remainder(x));
+            numerical = numerical.max((candidate.numerical)(x - at));
+            written = written.max((candidate.written)(x - at));
         }
+        remainder = view.crossed(from, to).fold(remainder, f64::max);
         let samples = (0..=8)
             .map(|k| {
                 let x = if k == 8 { to } else { from + (to - from) * f64::from(k) / 8.0 };
-                Ok(Sample { control: x, exact: self.exact(x)?, formula: candidate.form.value(x - self.at) })
+                Ok(Sample { control: x, exact: view.exact(x)?, formula: candidate.form.value(x - at) })
             })
             .collect::<Result<Vec<_>>>()?;
         Ok(Ranged {
             form: candidate.form.clone(),
             valid: (from, to),
-            limited_by: [low, high],
-            first_to_fail: [fails_below, fails_above],
+            limited_by: [low.limit, high.limit],
+            first_to_fail: [low.fails, high.fails],
             remainder,
             numerical,
             written,

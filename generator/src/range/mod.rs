@@ -7,17 +7,23 @@
 //!
 //! Method: the exact level is followed outwards by isolation discs; on each
 //! piece it is interpolated at Chebyshev points with a bounded error; ends are
-//! found on the interpolants by proven bounds. Where the discs shrink to nothing
-//! levels meet: the walk ends there, and no range is stated beyond it.
+//! found on the interpolants by proven bounds and polished by exact solves. Where
+//! two levels come close, both are followed as a pair, and the walk goes over to the
+//! other level where that is the same state and the form does not notice the gap.
 //!
 //! Not here: languages, number formats.
 
+mod crossing;
+mod exact;
 mod follow;
+mod followed;
+mod interpolant;
 mod measure;
 #[cfg(test)]
 mod toy;
+mod view;
 
-pub use measure::{Followed, follow};
+pub use followed::{Followed, follow};
 
 use crate::form::Form;
 use crate::outcome::Note;
