@@ -12,6 +12,9 @@ use crate::with_level;
 /// Part of the tolerance to which each level is interpolated.
 const ACCURACY: f64 = 1e-8;
 
+/// A side, the places where it stays on its level, and what was found.
+type Again = (usize, Vec<f64>, Rc<Side>);
+
 /// One level of a sum, followed.
 pub(super) struct Track {
     pub times: f64,
@@ -22,7 +25,7 @@ pub(super) struct Track {
     margin: f64,
     share: f64,
     /// Sides walked again, with the places where they stay on their level.
-    stayed: RefCell<Vec<(usize, Vec<f64>, Rc<Side>)>>,
+    stayed: RefCell<Vec<Again>>,
 }
 
 impl Track {
