@@ -1,13 +1,15 @@
 //! Exact solves: the lowest levels at one control value, with their changes.
 
 use crate::diagnostic::{Error, Result};
-use crate::pencil::{Eigenpair, Scalar, State, lowest};
+use crate::pencil::{Eigenpair, Hermitian, Scalar, State, factor, isolated, lowest};
 use crate::series::Level;
 
-/// The lowest levels of the block at one control value.
+/// Consecutive levels of the block at one control value.
 pub(super) struct Solved<T: Scalar> {
     /// Ascending.
     pub pairs: Vec<Eigenpair<T>>,
+    /// Number of levels below the first of them.
+    below: usize,
 }
 
 /// The lowest levels at `x`, at least up to `number`, if there are so many.
@@ -17,7 +19,36 @@ pub(super) fn solve<T: Scalar>(level: &Level<T>, x: f64, number: usize) -> Resul
     if pairs.len() < number.min(order) {
         return Err(Error::internal("fewer levels were found than the matrix has"));
     }
-    Ok(Solved { pairs })
+    Ok(Solved { pairs, below: 0 })
+}
+
+/// The levels `low..=high` at `x`, from nearby states in the same order: where the matrix
+/// is a band, each costs a few factorisations.
+pub(super) fn solve_near<T: Scalar>(
+    level: &Level<T>,
+    x: f64,
+    (low, high): (usize, usize),
+    guesses: &[State<T>],
+) -> Result<Solved<T>> {
+    let matrix = level.model.hamiltonian(x);
+    if !matches!(matrix, Hermitian::Banded(_)) || guesses.len() != high + 1 - low {
+        return solve(level, x, high);
+    }
+    let pairs = (low..=high)
+        .zip(guesses)
+        .map(|(number, guess)| isolated(&matrix, number, guess, None).map(|found| found.0))
+        .collect::<Result<Vec<_>>>()?;
+    Ok(Solved { pairs, below: low - 1 })
+}
+
+/// How many levels lie below each of two energies at `x`.
+pub(super) fn counts<T: Scalar>(level: &Level<T>, x: f64, energies: [f64; 2]) -> Result<[usize; 2]> {
+    let matrix = level.model.hamiltonian(x);
+    if matches!(matrix, Hermitian::Banded(_)) {
+        return Ok([factor(&matrix, energies[0])?.below(), factor(&matrix, energies[1])?.below()]);
+    }
+    let pairs = lowest(&matrix, matrix.order())?;
+    Ok(energies.map(|limit| pairs.iter().filter(|pair| pair.energy < limit).count()))
 }
 
 /// True if the Hamiltonian is finite at `x`.
@@ -30,7 +61,7 @@ impl<T: Scalar> Solved<T> {
     /// The level with this number.
     pub fn get(&self, number: usize) -> Result<&Eigenpair<T>> {
         self.pairs
-            .get(number.wrapping_sub(1))
+            .get(number.wrapping_sub(1 + self.below))
             .ok_or_else(|| Error::internal("a followed level is beyond the order of its matrix"))
     }
 
@@ -39,11 +70,11 @@ impl<T: Scalar> Solved<T> {
         if number == 0 {
             return f64::NEG_INFINITY;
         }
-        self.pairs.get(number - 1).map_or(f64::INFINITY, |pair| pair.energy)
+        self.pairs.get((number - 1).wrapping_sub(self.below)).map_or(f64::INFINITY, |pair| pair.energy)
     }
 
     /// Distances of the levels `low..=high` to the next lower and the next upper level.
-    /// The caller has solved one level beyond `high`.
+    /// The caller has solved all levels up to one beyond `high`.
     pub fn apart(&self, (low, high): (usize, usize)) -> (f64, f64) {
         (self.energy(low) - self.energy(low.saturating_sub(1)), self.energy(high + 1) - self.energy(high))
     }
@@ -52,6 +83,11 @@ impl<T: Scalar> Solved<T> {
     pub fn isolation(&self, set: (usize, usize)) -> f64 {
         let (below, above) = self.apart(set);
         below.min(above)
+    }
+
+    /// States of the levels `low..=high`.
+    pub fn states(&self, (low, high): (usize, usize)) -> Result<Vec<State<T>>> {
+        (low..=high).map(|number| self.get(number).map(|pair| pair.state.clone())).collect()
     }
 
     /// Mean change from the operating point of the levels `low..=high`.

@@ -12,7 +12,7 @@
 //! branch is carried by overlap from sample to sample, and noted as such.
 
 use super::crossing::{Crossing, crossing};
-use super::exact::{Solved, defined, solve};
+use super::exact::{Solved, defined, solve, solve_near};
 use super::interpolant::{Interpolant, Kind, Piece, chebyshev_points, degree, ellipse};
 use crate::diagnostic::{Error, Result};
 use crate::model::HIGHEST_POWER;
@@ -104,7 +104,8 @@ impl Side {
             }
             Some(piece) => self.numbers_on(piece, x),
         };
-        Ok((numbers, solve(level, x, numbers.1)?.change(level, x, numbers)?))
+        let guess = if numbers.0 == numbers.1 { vec![level.state.clone()] } else { Vec::new() };
+        Ok((numbers, solve_near(level, x, numbers, &guess)?.change(level, x, numbers)?))
     }
 
     fn numbers_on(&self, piece: &Piece, x: f64) -> (usize, usize) {
@@ -240,7 +241,7 @@ impl<T: Scalar> Walk<'_, T> {
                     self.side.stop = Stop::Meeting(gap);
                     return Ok(());
                 }
-                return self.single(here, own, gap);
+                return self.single(here, own, gap, &solved);
             }
         }
         let set = if alone { paired(&solved, first) } else { first };
@@ -290,25 +291,37 @@ impl<T: Scalar> Walk<'_, T> {
         inside
     }
 
-    /// Solves at the nodes of a piece; `None`, and the walk ends, where the Hamiltonian has no value.
-    fn nodes(&mut self, from: f64, to: f64, degree: usize, number: usize) -> Result<Option<Nodes<T>>> {
+    /// Solves for a set of levels at the nodes of a piece, from their states where it begins;
+    /// `None`, and the walk ends, where the Hamiltonian has no value.
+    fn nodes(
+        &mut self,
+        (from, to): (f64, f64),
+        degree: usize,
+        set: (usize, usize),
+        mut guesses: Vec<State<T>>,
+    ) -> Result<Option<Nodes<T>>> {
         let nodes = chebyshev_points(from, to, degree);
         if (to - from).abs() < NARROWEST * self.span || nodes.iter().any(|&x| !defined(self.level, x)) {
             self.side.stop = Stop::Undefined;
             return Ok(None);
         }
-        let solved = nodes.iter().map(|&x| solve(self.level, x, number)).collect::<Result<Vec<_>>>()?;
+        let mut solved = Vec::with_capacity(nodes.len());
+        for &x in &nodes {
+            let one = solve_near(self.level, x, set, &guesses)?;
+            guesses = one.states(set)?;
+            solved.push(one);
+        }
         Ok(Some((nodes, solved)))
     }
 
     /// A piece on which the level is alone.
-    fn single(&mut self, here: f64, r: f64, gap: f64) -> Result<()> {
+    fn single(&mut self, here: f64, r: f64, gap: f64, solved: &Solved<T>) -> Result<()> {
         let to = self.outer(here, r);
         let rho = ellipse((to - here).abs(), r);
         let size = if gap.is_finite() { 0.5 * gap } else { 0.0 };
         let (degree, bound) = degree(size, rho, self.task.accuracy, HIGHEST_DEGREE.0);
         let numbers = self.numbers;
-        let Some((nodes, solved)) = self.nodes(here, to, degree, numbers.1)? else {
+        let Some((nodes, solved)) = self.nodes((here, to), degree, numbers, solved.states(numbers)?)? else {
             return Ok(());
         };
         let mut values = Vec::with_capacity(nodes.len());
@@ -336,6 +349,7 @@ impl<T: Scalar> Walk<'_, T> {
         degenerate: bool,
         solved: &Solved<T>,
     ) -> Result<()> {
+        let set = (low, low + 1);
         let to = self.outer(here, r);
         let rho = ellipse((to - here).abs(), r);
         let size = if gap.is_finite() { 0.5 * gap } else { 0.0 };
@@ -350,7 +364,7 @@ impl<T: Scalar> Walk<'_, T> {
         let (mean_degree, _) = degree(size, rho, self.task.accuracy, HIGHEST_DEGREE.1);
         let degree = square_degree.max(mean_degree);
         let mean_bound = 4.0 * size / (rho - 1.0) * libm::pow(rho, -(degree as f64));
-        let Some((nodes, solved)) = self.nodes(here, to, degree, low + 2)? else {
+        let Some((nodes, solved)) = self.nodes((here, to), degree, set, solved.states(set)?)? else {
             return Ok(());
         };
         let pivot = degenerate.then_some(self.at);
@@ -452,7 +466,7 @@ impl<T: Scalar> Walk<'_, T> {
     fn branch(&mut self, here: f64, r: f64, set: (usize, usize)) -> Result<()> {
         let mut to = self.outer(here, 0.5 * r);
         while (to - here).abs() > NARROWEST * self.span {
-            let Some((nodes, solved)) = self.nodes(here, to, BRANCH_DEGREE, set.1)? else {
+            let Some((nodes, solved)) = self.nodes((here, to), BRANCH_DEGREE, set, Vec::new())? else {
                 return Ok(());
             };
             if let Some((values, numbers, state)) = self.carry(&nodes, &solved, set, here == self.at)? {

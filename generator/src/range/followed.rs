@@ -4,13 +4,14 @@ use std::cell::RefCell;
 use std::rc::Rc;
 
 use super::Request;
+use super::exact::{counts, defined};
 use super::follow::{Side, Task, walk};
 use crate::diagnostic::Result;
 use crate::series::AnyLevel;
 use crate::with_level;
 
 /// Part of the tolerance to which each level is interpolated.
-const ACCURACY: f64 = 1e-8;
+const ACCURACY: f64 = 1e-7;
 
 /// A side, the places where it stays on its level, and what was found.
 type Again = (usize, Vec<f64>, Rc<Side>);
@@ -41,6 +42,20 @@ impl Track {
         let found = Rc::new(with_level!(&self.level, level => walk(level, task))?);
         self.stayed.borrow_mut().push((side, stays.to_vec(), found.clone()));
         Ok(found)
+    }
+
+    /// True if the Hamiltonian has a value at `x`.
+    pub fn defined(&self, x: f64) -> bool {
+        with_level!(&self.level, level => defined(level, x))
+    }
+
+    /// How many levels at `x` lie below the energy that is changed by `change` from the operating
+    /// point's, less `margin`, and how many within `margin` of it.
+    pub fn counts(&self, x: f64, change: f64, margin: f64) -> Result<[usize; 2]> {
+        let energy = self.level.energies()[0] + change;
+        let around = [energy - margin, energy + margin];
+        let [below, above] = with_level!(&self.level, level => counts(level, x, around))?;
+        Ok([below, above.saturating_sub(below)])
     }
 
     /// The followed level by a solve of its own.

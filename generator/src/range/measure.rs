@@ -1,20 +1,17 @@
 //! The range of a form, with its error budget and samples.
 
 use super::follow::Stop;
-use super::followed::{Followed, Track};
+use super::followed::Followed;
 use super::interpolant::chebyshev_points;
 use super::view::View;
 use super::{Candidate, Limit, Ranged, Sample};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::outcome::Note;
-use crate::with_level;
 
 /// Intervals of the scan for maxima.
 const SCAN: usize = 200;
 /// Solves that look for another level beyond the range's end.
 const LOOKS: usize = 48;
-/// Levels above the followed one among which that is looked for.
-const NEIGHBOURS: usize = 8;
 /// Relative distance from the tolerance at which an error grazes it.
 const GRAZING: f64 = 1e-6;
 /// Part of the range by which the ends for two tolerances that far apart differ at most
@@ -35,40 +32,44 @@ impl View<'_> {
 
     /// True if from `from` to `to` the form comes within the tolerance of the sum with
     /// one level replaced by another of its block. Energies counted by number are
-    /// continuous, so a change of sign between two solves is proof.
+    /// continuous, so a changed count of levels below the form is proof.
     fn meets_other(&self, from: f64, to: f64) -> Result<bool> {
         let followed = self.followed;
         let at_side = followed.side(to);
-        let mut before: Vec<Vec<f64>> = vec![Vec::new(); followed.tracks.len()];
+        let mut before: Vec<Option<usize>> = vec![None; followed.tracks.len()];
         for k in 1..=LOOKS {
             let x = from + (to - from) * k as f64 / LOOKS as f64;
-            if !(followed.known_change)(x).is_finite() {
-                return Ok(false);
-            }
-            let mut off =
-                self.candidate.form.value(x - followed.at) - followed.base - (followed.known_change)(x);
-            let mut seen = Vec::with_capacity(followed.tracks.len());
+            let known = (followed.known_change)(x);
+            let mut off = self.candidate.form.value(x - followed.at) - followed.base - known;
+            let mut changes = Vec::with_capacity(followed.tracks.len());
             for (track, sides) in followed.tracks.iter().zip(&self.sides) {
                 let side = &sides[at_side];
-                let Some((number, own, energies)) = others(track, side, x)? else {
+                if !known.is_finite() || !track.defined(x) {
                     return Ok(false);
+                }
+                let change = match side.change(x) {
+                    Some((change, _)) => change,
+                    None => track.exact(side, x)?.1,
                 };
-                off -= track.times * own;
-                seen.push((number, own, energies));
+                off -= track.times * change;
+                changes.push(change);
             }
-            for ((track, before), (number, own, energies)) in
-                followed.tracks.iter().zip(&mut before).zip(&seen)
-            {
-                let away: Vec<f64> = energies.iter().map(|e| off - track.times * (e - own)).collect();
-                let met = away.iter().enumerate().any(|(j, &now)| {
-                    j + 1 != *number
-                        && (now.abs() <= self.tolerance()
-                            || before.get(j).is_some_and(|&then| (then < 0.0) != (now < 0.0)))
-                });
-                if met {
+            let walked = followed.tracks.iter().zip(&self.sides).zip(&mut before).zip(changes);
+            for (((track, sides), before), own) in walked {
+                let wanted = own + off / track.times;
+                let margin = self.tolerance() / track.times.abs();
+                let [mut below, mut within] = track.counts(x, wanted, margin)?;
+                // The followed level itself is none of the others.
+                let (low, high) = sides[at_side].last;
+                if own < wanted - margin {
+                    below = below.saturating_sub(high + 1 - low);
+                } else if own <= wanted + margin {
+                    within = within.saturating_sub(high + 1 - low);
+                }
+                if within > 0 || before.is_some_and(|then| then != below) {
                     return Ok(true);
                 }
-                *before = away;
+                *before = Some(below);
             }
         }
         Ok(false)
@@ -225,21 +226,6 @@ impl View<'_> {
     }
 }
 
-/// Number and change of the followed level at `x`, and the changes of all levels
-/// near it by number; `None` where the Hamiltonian has no value.
-#[allow(clippy::type_complexity)] // one pass, one use
-fn others(track: &Track, side: &super::follow::Side, x: f64) -> Result<Option<(usize, f64, Vec<f64>)>> {
-    with_level!(&track.level, level => {
-        if !super::exact::defined(level, x) {
-            return Ok(None);
-        }
-        let ((number, _), own) = side.exact(level, x)?;
-        let solved = super::exact::solve(level, x, number + NEIGHBOURS)?;
-        let base = solved.get(number)?.energy - own;
-        Ok(Some((number, own, solved.pairs.iter().map(|pair| pair.energy - base).collect())))
-    })
-}
-
 impl Followed<'_> {
     /// The range on which the candidate keeps the tolerance, with its error budget.
     ///
@@ -273,7 +259,9 @@ impl Followed<'_> {
             written = written.max((candidate.written)(x - at));
         }
         remainder = view.crossed(from, to).fold(remainder, f64::max);
-        let samples = (0..=8)
+        // A number format is asked for its range alone.
+        let count = if candidate.rounding > 0.0 { 0 } else { 9 };
+        let samples = (0..count)
             .map(|k| {
                 let x = if k == 8 { to } else { from + (to - from) * f64::from(k) / 8.0 };
                 Ok(Sample { control: x, exact: view.exact(x)?, formula: candidate.form.value(x - at) })

@@ -135,7 +135,7 @@ pub struct Ranged {
     pub numerical: f64,
     /// Largest error of written digits inside.
     pub written: f64,
-    /// At least 9 samples over the range, ends included.
+    /// At least 9 samples over the range, ends included; none for a candidate with rounding.
     pub samples: Vec<Sample>,
     /// Crossings and the like.
     pub notes: Vec<Note>,
