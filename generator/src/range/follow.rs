@@ -20,19 +20,19 @@ use crate::pencil::{Scalar, State};
 use crate::series::Level;
 
 /// Most pieces on one side; beyond it the walk ends.
-const MOST_PIECES: usize = 300;
+pub(super) const MOST_PIECES: usize = 300;
 /// Highest degree of an interpolant of a level, and of a pair.
 const HIGHEST_DEGREE: (usize, usize) = (26, 32);
 /// Degree of a branch carried by overlap.
 const BRANCH_DEGREE: usize = 24;
 /// Part of a disc's radius that a piece covers.
-const COVER: f64 = 0.7;
+pub(super) const COVER: f64 = 0.7;
 /// A set of levels replaces a smaller one whose disc is less than this part of its own.
 const WORTHWHILE: f64 = 0.25;
 /// Part of the search below which the disc of a pair is given up for a larger set.
 const NARROW: f64 = 1e-4;
 /// Part of the search below which a disc ends the walk.
-const NARROWEST: f64 = 1e-9;
+pub(super) const NARROWEST: f64 = 1e-9;
 /// Largest number of levels carried as one set.
 const LARGEST_SET: usize = 40;
 /// Squared overlap by which a branch is recognised at the next sample.
@@ -129,7 +129,7 @@ impl Side {
 }
 
 /// Largest `r` with `sum rates[k] r^(k+1) <= goal`, from below.
-fn radius(rates: &[f64; HIGHEST_POWER], goal: f64, cap: f64) -> f64 {
+pub(super) fn radius(rates: &[f64; HIGHEST_POWER], goal: f64, cap: f64) -> f64 {
     let moved = |r: f64| moved(rates, r);
     if moved(cap) <= goal {
         return cap;

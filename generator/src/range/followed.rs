@@ -3,11 +3,12 @@
 use std::cell::RefCell;
 use std::rc::Rc;
 
-use super::Request;
-use super::exact::{counts, defined};
+use super::exact::{counts, defined, solve};
 use super::follow::{Side, Task, walk};
+use super::overlap::Pair;
+use super::{OverlapRequest, Request};
 use crate::diagnostic::Result;
-use crate::series::AnyLevel;
+use crate::series::{AnyLevel, points};
 use crate::with_level;
 
 /// Part of the tolerance to which each level is interpolated.
@@ -16,12 +17,21 @@ const ACCURACY: f64 = 1e-7;
 /// A side, the places where it stays on its level, and what was found.
 type Again = (usize, Vec<f64>, Rc<Side>);
 
-/// One level of a sum, followed.
+/// What a track follows.
+pub(super) enum Target {
+    /// A level.
+    Level(AnyLevel),
+    /// A squared overlap.
+    Overlap(Box<Pair>),
+}
+
+/// One level of a sum, or an overlap, followed.
 pub(super) struct Track {
     pub times: f64,
     pub system: String,
-    pub level: AnyLevel,
+    pub target: Target,
     pub sides: [Rc<Side>; 2],
+    at: f64,
     reach: [(f64, f64); 2],
     margin: f64,
     share: f64,
@@ -30,6 +40,30 @@ pub(super) struct Track {
 }
 
 impl Track {
+    fn new(
+        times: f64,
+        system: &str,
+        target: Target,
+        at: f64,
+        within: (f64, f64),
+        margin: f64,
+        share: f64,
+    ) -> Result<Self> {
+        let mut track = Self {
+            times,
+            system: system.to_owned(),
+            target,
+            sides: [Rc::new(Side::empty(at)), Rc::new(Side::empty(at))],
+            at,
+            reach: [within.0, within.1].map(|end| (end, at + 2.0 * (end - at))),
+            margin,
+            share,
+            stayed: RefCell::new(Vec::new()),
+        };
+        track.sides = [track.staying(0, &[])?, track.staying(1, &[])?];
+        Ok(track)
+    }
+
     /// A side that stays on its level at the given closest approaches.
     pub fn staying(&self, side: usize, stays: &[f64]) -> Result<Rc<Side>> {
         let kept = self.stayed.borrow().iter().find(|one| one.0 == side && one.1 == stays).cloned();
@@ -39,28 +73,45 @@ impl Track {
         let (wanted, reach) = self.reach.get(side).copied().unwrap_or_default();
         let task =
             Task { reach, wanted, accuracy: ACCURACY * self.margin / self.share, margin: self.margin, stays };
-        let found = Rc::new(with_level!(&self.level, level => walk(level, task))?);
+        let found = Rc::new(match &self.target {
+            Target::Level(level) => with_level!(level, level => walk(level, task))?,
+            Target::Overlap(pair) => pair.walk(self.at, task)?,
+        });
         self.stayed.borrow_mut().push((side, stays.to_vec(), found.clone()));
         Ok(found)
     }
 
+    /// True if an overlap is followed: where one of its levels meets another, its range ends.
+    pub fn is_overlap(&self) -> bool {
+        matches!(self.target, Target::Overlap(_))
+    }
+
     /// True if the Hamiltonian has a value at `x`.
     pub fn defined(&self, x: f64) -> bool {
-        with_level!(&self.level, level => defined(level, x))
+        match &self.target {
+            Target::Level(level) => with_level!(level, level => defined(level, x)),
+            Target::Overlap(pair) => pair.defined(x),
+        }
     }
 
     /// How many levels at `x` lie below the energy that is changed by `change` from the operating
-    /// point's, less `margin`, and how many within `margin` of it.
-    pub fn counts(&self, x: f64, change: f64, margin: f64) -> Result<[usize; 2]> {
-        let energy = self.level.energies()[0] + change;
+    /// point's, less `margin`, and how many within `margin` of it; `None` for an overlap.
+    pub fn counts(&self, x: f64, change: f64, margin: f64) -> Result<Option<[usize; 2]>> {
+        let Target::Level(level) = &self.target else {
+            return Ok(None);
+        };
+        let energy = level.energies()[0] + change;
         let around = [energy - margin, energy + margin];
-        let [below, above] = with_level!(&self.level, level => counts(level, x, around))?;
-        Ok([below, above.saturating_sub(below)])
+        let [below, above] = with_level!(level, level => counts(level, x, around))?;
+        Ok(Some([below, above.saturating_sub(below)]))
     }
 
-    /// The followed level by a solve of its own.
-    pub fn exact(&self, side: &Side, x: f64) -> Result<((usize, usize), f64)> {
-        with_level!(&self.level, level => side.exact(level, x))
+    /// Change of the followed quantity from the operating point by a solve of its own.
+    pub fn exact(&self, side: &Side, x: f64) -> Result<f64> {
+        match &self.target {
+            Target::Level(level) => with_level!(level, level => side.exact(level, x)).map(|found| found.1),
+            Target::Overlap(pair) => Ok(pair.value(x)? - pair.start),
+        }
     }
 }
 
@@ -86,22 +137,26 @@ pub fn follow<'a>(request: &Request<'a>) -> Result<Followed<'a>> {
         .terms
         .iter()
         .map(|term| {
-            let margin = tolerance / term.times.abs();
-            let mut track = Track {
-                times: term.times,
-                system: term.system.to_owned(),
-                level: term.level.clone(),
-                sides: [Rc::new(Side::empty(at)), Rc::new(Side::empty(at))],
-                reach: [within.0, within.1].map(|end| (end, at + 2.0 * (end - at))),
-                margin,
-                share,
-                stayed: RefCell::new(Vec::new()),
-            };
-            track.sides = [track.staying(0, &[])?, track.staying(1, &[])?];
-            Ok(track)
+            let target = Target::Level(term.level.clone());
+            Track::new(term.times, term.system, target, at, within, tolerance / term.times.abs(), share)
         })
         .collect::<Result<Vec<_>>>()?;
     Ok(Followed { at, within, tolerance, base, known_change: request.known_change, tracks })
+}
+
+/// Follows a squared overlap to `at + 2 (end of within - at)` on both sides, or to where one
+/// of its levels meets another or escapes.
+///
+/// # Errors
+/// Those of the eigenvalue solves, and of levels that have no envelope.
+pub fn follow_overlap<'a>(request: &OverlapRequest<'a>) -> Result<Followed<'a>> {
+    let OverlapRequest { at, within, tolerance, base, levels: [a, b], systems } = *request;
+    let points = points(a, b)?;
+    let mut pair = Pair { levels: [a.clone(), b.clone()], points, start: 0.0 };
+    pair.start = pair.value(at)?;
+    let name = systems.join("` and `");
+    let track = Track::new(1.0, &name, Target::Overlap(Box::new(pair)), at, within, tolerance, 1.0)?;
+    Ok(Followed { at, within, tolerance, base, known_change: &|_| 0.0, tracks: vec![track] })
 }
 
 impl Followed<'_> {
@@ -124,20 +179,32 @@ impl Followed<'_> {
         sum
     }
 
-    /// The followed levels at `control` by solves of their own: position of the term,
-    /// number of the level in its block, energy in the model's unit. By these a coarser
+    /// The followed levels at `control` by solves of their own: position of the term
+    /// (of the level, for an overlap), number of the level in its block, energy in the model's unit. By these a coarser
     /// model is compared at the same level.
     ///
     /// # Errors
     /// Those of the eigenvalue solves.
     pub fn exact_energies(&self, control: f64) -> Result<Vec<(usize, usize, f64)>> {
-        self.tracks
-            .iter()
-            .enumerate()
-            .map(|(idx, track)| {
-                let ((number, _), change) = track.exact(&track.sides[self.side(control)], control)?;
-                Ok((idx, number, track.level.energies()[0] + change))
-            })
-            .collect()
+        let mut out = Vec::new();
+        for (idx, track) in self.tracks.iter().enumerate() {
+            let side = &track.sides[self.side(control)];
+            match &track.target {
+                Target::Level(level) => {
+                    let ((number, _), change) = with_level!(level, level => side.exact(level, control))?;
+                    out.push((idx, number, level.energies()[0] + change));
+                }
+                Target::Overlap(pair) => {
+                    for (which, level) in pair.levels.iter().enumerate() {
+                        let number = level.number();
+                        let energy = with_level!(level, level => {
+                            solve(level, control, number)?.get(number)?.energy
+                        });
+                        out.push((which, number, energy));
+                    }
+                }
+            }
+        }
+        Ok(out)
     }
 }

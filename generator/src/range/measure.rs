@@ -49,7 +49,7 @@ impl View<'_> {
                 }
                 let change = match side.change(x) {
                     Some((change, _)) => change,
-                    None => track.exact(side, x)?.1,
+                    None => track.exact(side, x)?,
                 };
                 off -= track.times * change;
                 changes.push(change);
@@ -58,7 +58,9 @@ impl View<'_> {
             for (((track, sides), before), own) in walked {
                 let wanted = own + off / track.times;
                 let margin = self.tolerance() / track.times.abs();
-                let [mut below, mut within] = track.counts(x, wanted, margin)?;
+                let Some([mut below, mut within]) = track.counts(x, wanted, margin)? else {
+                    continue;
+                };
                 // The followed level itself is none of the others.
                 let (low, high) = sides[at_side].last;
                 if own < wanted - margin {
@@ -171,7 +173,8 @@ impl View<'_> {
             .map(|(track, sides)| (track.system.as_str(), sides[side].stop));
         let limit = match stopped {
             Some((system, Stop::Meeting(gap))) => {
-                if x == at || !self.meets_other(x, wanted)? {
+                let overlap = matches!(self.followed.tracks.as_slice(), [one] if one.is_overlap());
+                if x == at || !overlap && !self.meets_other(x, wanted)? {
                     return Err(Error::accuracy(
                         Diagnostic::new(
                             "range-not-covered",

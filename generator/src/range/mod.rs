@@ -17,13 +17,16 @@ mod crossing;
 mod exact;
 mod follow;
 mod followed;
+mod formal;
 mod interpolant;
 mod measure;
+mod overlap;
 #[cfg(test)]
 mod toy;
 mod view;
 
-pub use followed::{Followed, follow};
+pub use followed::{Followed, follow, follow_overlap};
+pub use formal::Formal;
 
 use crate::form::Form;
 use crate::outcome::Note;
@@ -54,6 +57,23 @@ pub struct Request<'a> {
     /// change from there.
     pub base: f64,
     /// Largest error allowed, formula's unit.
+    pub tolerance: f64,
+}
+
+/// A squared overlap that is to be followed.
+pub struct OverlapRequest<'a> {
+    /// Operating point.
+    pub at: f64,
+    /// Wanted interval, `from <= at <= to`.
+    pub within: (f64, f64),
+    /// Names of both systems, for notes.
+    pub systems: [&'a str; 2],
+    /// The two levels.
+    pub levels: [&'a AnyLevel; 2],
+    /// The squared overlap at the operating point as the series has it; 0 if the formula
+    /// gives the change from there.
+    pub base: f64,
+    /// Largest error allowed.
     pub tolerance: f64,
 }
 

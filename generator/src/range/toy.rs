@@ -4,7 +4,7 @@ use std::rc::Rc;
 
 use nalgebra::DMatrix;
 
-use super::{Candidate, Limit, Ranged, Request, Term, follow};
+use super::{Candidate, Formal, Limit, OverlapRequest, Ranged, Request, Term, follow, follow_overlap};
 use crate::diagnostic::Result;
 use crate::form::Form;
 use crate::model::{HIGHEST_POWER, Model};
@@ -48,6 +48,13 @@ impl Model<f64> for Linear {
     }
     fn escape_edge(&self, x: f64) -> Option<f64> {
         self.edge.map(|(height, slope)| height - slope * x.abs())
+    }
+    // Basis states stand at whole-numbered positions.
+    fn envelope(&self, state: &State<f64>, position: f64) -> Option<f64> {
+        state.get(position as usize).copied()
+    }
+    fn quadrature(&self) -> Option<Vec<(f64, f64)>> {
+        Some((0..self.order()).map(|k| (k as f64, 1.0)).collect())
     }
     fn degeneracy_scale(&self) -> f64 {
         1e-12
@@ -226,4 +233,82 @@ fn levels_degenerate_for_good_are_followed_as_one() {
     let u = libm::sqrt(2e-3);
     let end = libm::sqrt((1.0 + u) * (1.0 + u) - 1.0);
     assert!((ranged.valid.1 / end - 1.0).abs() < 1e-8, "{:?}", ranged.valid);
+}
+
+/// The ground state of `[[-1, x], [x, 1]]` turns by half the angle whose tangent is `x`, so its
+/// squared overlap with the state at 0 is `(1 + 1 / sqrt(1 + x^2)) / 2 = 1 - x^2 / 4 + ...`.
+#[test]
+fn a_squared_overlap_ends_where_its_closed_form_says() {
+    let a = solved(&[-1.0, 0.0, 0.0, 1.0], &[0.0, 1.0, 1.0, 0.0], 1, None);
+    let b = solved(&[-1.0, 0.0, 0.0, 1.0], &[0.0; 4], 1, None);
+    let request = OverlapRequest {
+        at: 0.0,
+        within: (-1.0, 1.0),
+        systems: ["a", "b"],
+        levels: [&a, &b],
+        base: 1.0,
+        tolerance: 1e-3,
+    };
+    let form = Form::Polynomial { coefficients: vec![1.0, 0.0, -0.25] };
+    let zero = |_: f64| 0.0;
+    let candidate = Candidate { form: &form, numerical: &zero, written: &zero, rounding: 0.0 };
+    let followed = follow_overlap(&request).unwrap();
+    let ranged = followed.measure(&candidate).unwrap();
+    let exact = |x: f64| 0.5 + 0.5 / libm::sqrt(1.0 + x * x);
+    for end in [ranged.valid.0, ranged.valid.1] {
+        let error = (exact(end) - 1.0 + 0.25 * end * end).abs();
+        assert!((error / 1e-3 - 1.0).abs() < 1e-8, "{end} {error}");
+    }
+    assert_eq!(ranged.limited_by, [Limit::Remainder; 2]);
+    for sample in &ranged.samples {
+        assert!((sample.exact - exact(sample.control)).abs() < 1e-14);
+    }
+    let energies = followed.exact_energies(0.75).unwrap();
+    assert_eq!(energies.len(), 2);
+    assert!((energies[0].2 + 1.25).abs() < 1e-14 && (energies[1].2 + 1.0).abs() < 1e-14);
+}
+
+/// `d^4` alone reaches half of 2e-4 at 0.1; with `3 d^6 / 0.01` on top both reach 4 d^4 there.
+#[test]
+fn formal_ranges_end_at_half_the_tolerance() {
+    let form = Form::Polynomial { coefficients: vec![0.0] };
+    let zero = |_: f64| 0.0;
+    let candidate = Candidate { form: &form, numerical: &zero, written: &zero, rounding: 0.0 };
+    for (next, tolerance) in [(vec![(4, -1.0)], 2e-4), (vec![(4, 1.0), (6, -300.0)], 8e-4)] {
+        let formal = Formal { at: 2.0, within: (1.0, 2.05), next: &next, tolerance };
+        let ranged = formal.measure(&candidate).unwrap();
+        assert!((ranged.valid.0 - 1.9).abs() < 1e-12 && ranged.valid.1 == 2.05, "{:?}", ranged.valid);
+        assert_eq!(ranged.limited_by, [Limit::Formal, Limit::Within]);
+        assert!((ranged.remainder - 0.5 * tolerance).abs() < 1e-12);
+        assert_eq!(ranged.first_to_fail[0], Some(ranged.valid.0));
+    }
+}
+
+/// A formula between the two levels of a gap of 0.9 tolerances, its distance from the mean
+/// 0.7 tolerances there: the state does not go over, and the range ends where the level
+/// by number turns away.
+#[test]
+fn crossings_that_the_form_misses_are_not_stepped_over() {
+    let (tolerance, half) = (1e-3, 0.45e-3);
+    let level = solved(&[0.0, half, half, 1.0], &[1.0, 0.0, 0.0, -1.0], 1, None);
+    let lower = |x: f64| 0.5 - libm::sqrt((x - 0.5) * (x - 0.5) + half * half);
+    let form = [level.energies()[0], level.energies()[1] - 1.4e-3];
+    let ranged = measured(&level, &form, tolerance, (0.0, 1.0), &none, 0.0).unwrap();
+    let error = (form[0] + form[1] * ranged.valid.1 - lower(ranged.valid.1)).abs();
+    assert!((error / tolerance - 1.0).abs() < 1e-6, "{:?} {error}", ranged.valid);
+    assert!(ranged.valid.1 > 0.5 && ranged.valid.1 < 0.503, "{:?}", ranged.valid);
+    assert_eq!(ranged.limited_by[1], Limit::Crossing);
+}
+
+/// The error `d^2 (1 - d^2)` has its peak of 1/4 at `1 / sqrt 2`: a tolerance a ten-millionth
+/// above it is grazed there, one a thousandth above is not.
+#[test]
+fn a_grazed_tolerance_ends_the_range() {
+    let level = solved(&[0.0], &[0.0], 1, None);
+    let form = [0.0, 0.0, 1.0, 0.0, -1.0];
+    for (above, grazed) in [(1e-7, true), (1e-3, false)] {
+        let ranged = measured(&level, &form, 0.25 * (1.0 + above), (0.0, 1.1), &none, 0.0).unwrap();
+        assert_eq!(ranged.notes.iter().any(|note| note.code == "grazing"), grazed);
+        assert_eq!(ranged.valid.1 < 0.8, grazed, "{:?}", ranged.valid);
+    }
 }

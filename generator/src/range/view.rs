@@ -145,7 +145,7 @@ impl<'a> View<'a> {
         let mut sum = self.followed.base + (self.followed.known_change)(x);
         if x != self.followed.at {
             for (track, sides) in self.followed.tracks.iter().zip(&self.sides) {
-                sum += track.times * track.exact(&sides[self.followed.side(x)], x)?.1;
+                sum += track.times * track.exact(&sides[self.followed.side(x)], x)?;
             }
         }
         Ok(sum)
