@@ -29,9 +29,10 @@ pub fn program() -> &'static Path {
             build.arg("--release");
         }
         assert!(build.status().expect("cargo runs").success(), "the program does not build");
-        // target/PROFILE/deps/this-test
+        // target/PROFILE/deps/this-test, or target/PROFILE/this-program
         let exe = std::env::current_exe().expect("a test knows its own path");
-        let profile = exe.parent().and_then(Path::parent).expect("a test lies two folders deep");
+        let folder = exe.parent().expect("a program lies in a folder");
+        let profile = if folder.ends_with("deps") { folder.parent().unwrap_or(folder) } else { folder };
         profile.join("shiftwright")
     })
 }

@@ -83,39 +83,45 @@ fn norm<T: Scalar>(band: &Banded<T>) -> f64 {
 }
 
 /// One attempt; the largest factor comes with it.
+///
+/// Outer products: each finished column is taken out of the rows after it, so
+/// that the innermost loop runs over neighbours that do not wait for each other.
 fn attempt<T: Scalar>(band: &Banded<T>, shift: f64, floor: f64) -> (BandFactor<T>, f64) {
     let (n, w) = (band.order, band.width);
+    let mut work = band.entries.clone();
+    for diagonal in work.iter_mut().skip(w).step_by(w + 1) {
+        *diagonal -= T::from_real(shift);
+    }
     let mut lower = vec![T::zero(); n * w];
-    let mut scaled = vec![T::zero(); w];
     let mut pivots: Vec<f64> = Vec::with_capacity(n);
+    let mut column = vec![T::zero(); w];
+    let mut conjugates = vec![T::zero(); w];
     let mut growth = 0.0_f64;
-    for row in 0..n {
-        let from = row.saturating_sub(w);
-        let here = &band.entries[row * (w + 1)..(row + 1) * (w + 1)];
-        let (done, open) = lower.split_at_mut(row * w);
-        let current = &mut open[..w];
-        let mut pivot = here[w].real() - shift;
-        for column in from..row {
-            let place = w - (row - column);
-            // Both rows overlap from this column back to the later of their starts.
-            let start = from.max(column.saturating_sub(w));
-            let mine = &scaled[w - (row - start)..place];
-            let theirs = &done[column * w + w - (column - start)..(column + 1) * w];
-            let mut sum = here[place];
-            for (a, b) in mine.iter().zip(theirs) {
-                sum -= *a * b.conjugate();
-            }
-            scaled[place] = sum;
-            let factor = sum.unscale(pivots[column]);
-            growth = growth.max(factor.norm1());
-            current[place] = factor;
-            pivot -= (sum * factor.conjugate()).real();
-        }
+    for j in 0..n {
+        let mut pivot = work[j * (w + 1) + w].real();
         // An exactly singular leading block: any tiny pivot of either sign is right.
         if pivot.abs() < floor {
             pivot = if pivot < 0.0 { -floor } else { floor };
         }
         pivots.push(pivot);
+        let reach = w.min(n - 1 - j);
+        let inverse = 1.0 / pivot;
+        for k in 0..reach {
+            let row = j + 1 + k;
+            let element = work[row * (w + 1) + w - 1 - k];
+            let factor = element.scale(inverse);
+            growth = growth.max(factor.norm1());
+            lower[row * w + w - 1 - k] = factor;
+            column[k] = element;
+            conjugates[k] = factor.conjugate();
+        }
+        for (k, &element) in column[..reach].iter().enumerate() {
+            let end = (j + 1 + k) * (w + 1) + w + 1;
+            let row = &mut work[end - 1 - k..end];
+            for (slot, &factor) in row.iter_mut().zip(&conjugates[..=k]) {
+                *slot -= element * factor;
+            }
+        }
     }
     (BandFactor { shift, width: w, lower, pivots }, growth)
 }
@@ -367,6 +373,23 @@ impl<'a, T: Scalar> Ladder<'a, T> {
             }
         }
         Err(Error::internal("a level could not be bracketed"))
+    }
+
+    /// The energy of a level to within a tenth of its size or of the matrix's
+    /// rounding, by counts alone.
+    pub(super) fn rough(&mut self, number: usize) -> f64 {
+        for _ in 0..60 {
+            let (low, high) = self.bracket(number);
+            let width = high.0 - low.0;
+            let shift = Self::inside(low.0, high.0);
+            let done = width <= 0.1 * low.0.abs().max(high.0.abs()) || shift <= low.0 || shift >= high.0;
+            if done {
+                break;
+            }
+            self.count(shift);
+        }
+        let (low, high) = self.bracket(number);
+        0.5 * (low.0 + high.0)
     }
 
     /// The lowest `count` levels.

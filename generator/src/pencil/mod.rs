@@ -15,7 +15,8 @@ mod solve;
 
 pub use hermitian::{Banded, Hermitian};
 pub use solve::{
-    Eigenpair, Factor, eigenpair, eigenpair_near, factor, isolated, lowest, reduced_solve, spectrum,
+    Eigenpair, Factor, eigenpair, eigenpair_near, factor, isolated, lowest, reduced_solve, rough_energy,
+    spectrum,
 };
 
 use nalgebra::{Complex, ComplexField};

@@ -131,6 +131,18 @@ pub fn eigenpair<T: Scalar>(matrix: &Hermitian<T>, number: usize) -> Result<Eige
         .ok_or_else(|| Error::internal("a level beyond the order of its matrix was asked for"))
 }
 
+/// The energy of the level with this number to about a tenth of its size, where
+/// only the scale matters.
+///
+/// # Errors
+/// As [`eigenpair`].
+pub fn rough_energy<T: Scalar>(matrix: &Hermitian<T>, number: usize) -> Result<f64> {
+    match matrix {
+        Hermitian::Banded(band) if number > 0 && number <= band.order => Ok(Ladder::new(band)?.rough(number)),
+        _ => Ok(eigenpair(matrix, number)?.energy),
+    }
+}
+
 /// The level whose state overlaps most with `guess`, looked for near `energy`;
 /// its number is certified by an inertia count.
 ///

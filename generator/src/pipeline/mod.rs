@@ -54,6 +54,15 @@ pub fn solve(spec: &Spec) -> Result<Outcome> {
     with_formulas(spec, false).map(|run| run.outcome)
 }
 
+/// The series of every formula, without ranges: E0 to E4 in the formula's unit.
+///
+/// # Errors
+/// As [`run`], but for what only ranges show.
+pub fn series(spec: &Spec) -> Result<Vec<[f64; 5]>> {
+    let mut cache = Cache::new(spec);
+    spec.formulas.iter().map(|formula| Ok(cache.sum(formula, 0)?.series)).collect()
+}
+
 fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
     if let Some(parameter) = spec.family.first() {
         return Err(Error::spec(

@@ -90,7 +90,7 @@ pub fn build(system: &System, layers: &Layers, request: &Request<'_>) -> Result<
             .at(Some(system.place.clone())),
         ));
     }
-    let energy = pencil::eigenpair(model.expansion(0), request.level)?.energy;
+    let energy = pencil::rough_energy(model.expansion(0), request.level)?;
     model.scale = 1e-12 * (energy - model.lowest_edge).abs();
     let size = model.order();
     Ok(Built {
