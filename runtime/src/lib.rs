@@ -37,11 +37,18 @@
 //!
 //! Nothing allocates, panics or calls a mathematics library; the square root is
 //! [`root`], correctly rounded by integer arithmetic.
+//!
+//! With the feature `record` a host reads the numbers from a record: `record::Loaded`.
 #![no_std]
+
+#[cfg(feature = "record")]
+extern crate alloc;
 
 mod cuts;
 pub mod fixed;
 mod float;
+#[cfg(feature = "record")]
+pub mod record;
 pub mod root;
 
 pub use float::{double, single};

@@ -1,17 +1,15 @@
 //! Fixed-point files: every code of the control, in Rust, C and the runtime crate.
 
-use std::fmt::Write as _;
-
 use shiftwright::diagnostic::Place;
 use shiftwright::emit::{self, Target};
 use shiftwright::form::Form;
 use shiftwright::formula::{Fixed, FixedForm, Formula, NumberFormat, Numbers};
 use shiftwright::spec::Count;
-use shiftwright_runtime::{OutOfRange, fixed};
-use shiftwright_tests::{Scratch, text, tool};
+use shiftwright_runtime::fixed;
+use shiftwright_tests::Scratch;
 
-use crate::float::WARNINGS;
-use crate::samples;
+use crate::programs::{self, Callable, codes};
+use crate::{answers, host, samples};
 
 fn count(bits: u32, step: f64) -> Count {
     Count { bits, step, place: Place { file: "shapes.yaml".to_owned(), start: 0, end: 1 } }
@@ -51,37 +49,19 @@ fn numbers(formula: &Formula) -> &Fixed {
     fixed
 }
 
-/// A checksum of every answer, so that the programs print little.
-fn mix(sum: u64, word: i64) -> u64 {
-    (sum ^ word.cast_unsigned()).wrapping_mul(0x0000_0100_0000_01b3)
-}
-
 fn expected(formula: &Formula, at: f64) -> String {
     let fixed = numbers(formula);
     let reference = reference(fixed);
-    let mut sum = 0xcbf2_9ce4_8422_2325_u64;
     let (mut worst, mut worst_back) = (0.0_f64, 0.0_f64);
-    let put = |sum: u64, r: Result<i64, OutOfRange>| match r {
-        Ok(v) => mix(mix(sum, 0), v),
-        Err(e) => mix(sum, e as i64 + 1),
+    let branches: Vec<_> = fixed.branches().into_iter().map(|(_, _, branch, _)| branch).collect();
+    let mut back = |y: i64, n: i64| {
+        worst_back = worst_back.max((reference.value(n) - y).abs() as f64 * fixed.value_step);
     };
-    for n in i64::from(i16::MIN)..=i64::from(i16::MAX) {
-        let y = reference.value(n);
-        sum = mix(mix(sum, y), reference.slope(n));
-        sum = put(sum, reference.checked(n));
-        for (_, _, branch, _) in fixed.branches() {
-            let back = reference.inverse_on(y, &branch);
-            sum = put(sum, back);
-            sum = put(sum, reference.inverse_on(n, &branch));
-            if let Ok(back) = back {
-                worst_back = worst_back.max((reference.value(back) - y).abs() as f64 * fixed.value_step);
-            }
-        }
-        if n >= fixed.from && n <= fixed.to {
-            let d = n as f64 * fixed.control_step - at;
-            let exact = formula.measured.form.value(d);
-            worst = worst.max((y as f64 * fixed.value_step - exact).abs());
-        }
+    let sum = answers::of_fixed(&reference, &branches, (fixed.control_bits, fixed.value_bits), &mut back);
+    for n in codes(fixed.control_bits).filter(|n| *n >= fixed.from && *n <= fixed.to) {
+        let d = n as f64 * fixed.control_step - at;
+        let exact = formula.measured.form.value(d);
+        worst = worst.max((reference.value(n) as f64 * fixed.value_step - exact).abs());
     }
     let name = &formula.measured.name;
     println!(
@@ -98,61 +78,6 @@ fn expected(formula: &Formula, at: f64) -> String {
     );
     assert!(worst_back <= formula.inverse_rounding, "{name}: {worst_back:e} {:e}", formula.inverse_rounding);
     format!("{name} {sum:x}\n")
-}
-
-fn rust_program(stem: &str, formulas: &[Formula]) -> String {
-    let mut out = format!(
-        "mod {stem};\nuse {stem}::OutOfRange;\n\
-         fn mix(s: u64, w: i64) -> u64 {{ (s ^ w as u64).wrapping_mul(0x0000_0100_0000_01b3) }}\n\
-         fn put<T: Into<i64>>(s: u64, r: Result<T, OutOfRange>) -> u64 {{ match r {{ Ok(v) => mix(mix(s, 0), v.into()), Err(e) => mix(s, e as i64 + 1) }} }}\n\
-         fn main() {{\n"
-    );
-    for formula in formulas {
-        let name = &formula.measured.name;
-        let y = format!("i{}", numbers(formula).value_bits);
-        let _ = writeln!(out, "{{ use {stem}::{name}::*; let mut s = 0xcbf2_9ce4_8422_2325_u64;");
-        let _ = writeln!(
-            out,
-            "for n in i16::MIN..=i16::MAX {{ let mut y = [0]; many(&[n], &mut y); let y = y[0]; assert_eq!(y, value(n));"
-        );
-        let _ = writeln!(out, "s = mix(mix(s, y.into()), slope(n)); s = put(s, checked(n));");
-        for (inverse, ..) in numbers(formula).branches() {
-            let _ = writeln!(out, "s = put(s, {inverse}(y)); s = put(s, {inverse}({y}::from(n)));");
-        }
-        let _ = writeln!(out, "}} println!(\"{name} {{s:x}}\"); }}");
-    }
-    out.push_str("}\n");
-    out
-}
-
-fn c_program(stem: &str, formulas: &[Formula]) -> String {
-    let mut out = format!(
-        "#include \"{stem}.h\"\n#include <inttypes.h>\n#include <stdio.h>\nstatic uint64_t s;\n\
-         static void mix(int64_t w) {{ s = (s ^ (uint64_t)w) * UINT64_C(0x100000001b3); }}\n\
-         static void put({stem}_status status, int64_t v) {{ mix((int64_t)status); if (status == 0) mix(v); }}\n\
-         int main(void) {{ int32_t i;\n"
-    );
-    for formula in formulas {
-        let name = format!("{stem}_{}", formula.measured.name);
-        let y = format!("int{}_t", numbers(formula).value_bits);
-        let _ = writeln!(
-            out,
-            "s = UINT64_C(0xcbf29ce484222325);\nfor (i = -32768; i < 32768; i++) {{ int16_t n = (int16_t)i; int16_t b = 0; {y} v = 0; {y} y; {stem}_status t;"
-        );
-        let _ = writeln!(
-            out,
-            "{name}_many(&n, &y, 1); mix(y); mix({name}_slope(n)); t = {name}_checked(n, &v); put(t, v);"
-        );
-        for (inverse, ..) in numbers(formula).branches() {
-            let _ = writeln!(
-                out,
-                "t = {name}_{inverse}(y, &b); put(t, b); t = {name}_{inverse}(n, &b); put(t, b);"
-            );
-        }
-        let _ = writeln!(out, "}} printf(\"{} %\" PRIx64 \"\\n\", s);", formula.measured.name);
-    }
-    out.push_str("return 0; }\n");
-    out
 }
 
 fn every_code(at: f64, value: (u32, f64), label: &str) {
@@ -174,78 +99,22 @@ fn every_code(at: f64, value: (u32, f64), label: &str) {
             scratch.write(&source.file, &source.text);
         }
     }
-    scratch.write("main.rs", rust_program(stem, &formulas));
-    scratch.write("main.c", c_program(stem, &formulas));
+    let callable = Callable::all(&formulas);
+    scratch.write("main.rs", programs::fixed_rust(stem, &callable));
+    scratch.write("main.c", programs::fixed_c(stem, &callable));
     let expected: String = formulas.iter().map(|f| expected(f, at)).collect();
     let path = scratch.path();
     // Overflow checks on: every addition and product is watched.
-    tool(
-        path,
-        "rustc",
-        &[
-            "--edition",
-            "2021",
-            "-O",
-            "-C",
-            "overflow-checks=on",
-            "-D",
-            "warnings",
-            "main.rs",
-            "-o",
-            "from_rust",
-        ],
-    );
-    let run = |program: &str| {
-        let output = std::process::Command::new(path.join(program)).output().expect("the program starts");
-        assert!(output.status.success(), "{}", text(&output));
-        String::from_utf8(output.stdout).expect("text")
-    };
-    assert_eq!(run("from_rust"), expected, "Rust");
-    let source = format!("{stem}.c");
+    host::rust(path, &["-O", "-C", "overflow-checks=on"], "from_rust");
+    answers::same(&host::feed(path, "from_rust", ""), &expected, false, "Rust");
     for (compiler, sanitizer) in [("gcc", "undefined"), ("clang", "undefined,integer,implicit-conversion")] {
-        let mut arguments = WARNINGS.to_vec();
-        arguments.extend(["-O2", "-c", source.as_str(), "-o", "formula.o"]);
-        tool(path, compiler, &arguments);
-        let sanitize = format!("-fsanitize={sanitizer}");
-        arguments.extend([sanitize.as_str(), "-fno-sanitize-recover=all"]);
-        tool(path, compiler, &arguments);
-        tool(
-            path,
-            compiler,
-            &[
-                "-std=c99",
-                "-O1",
-                "main.c",
-                "formula.o",
-                &format!("-fsanitize={}", "undefined"),
-                "-o",
-                "from_c",
-            ],
-        );
-        assert_eq!(run("from_c"), expected, "{compiler}");
+        host::c(path, compiler, stem, &["-O2"], "from_c");
+        answers::same(&host::feed(path, "from_c", ""), &expected, false, compiler);
+        host::sanitized(path, compiler, stem, sanitizer, "from_c");
+        answers::same(&host::feed(path, "from_c", ""), &expected, false, &format!("{compiler} watched"));
     }
-    tool(path, "g++", &["-x", "c++", "-fsyntax-only", "-Wall", "-Werror", &format!("{stem}.h")]);
-    tool(
-        path,
-        "clippy-driver",
-        &[
-            "--edition",
-            "2021",
-            "--crate-type",
-            "lib",
-            "--emit",
-            "metadata",
-            "-D",
-            "warnings",
-            "-D",
-            "clippy::all",
-            "-D",
-            "clippy::pedantic",
-            &format!("{stem}.rs"),
-            "-o",
-            "x.rmeta",
-        ],
-    );
+    host::everything(path, stem);
+    host::pedantic(path, stem, &["2021"]);
 }
 
 #[test]

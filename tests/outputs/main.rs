@@ -1,7 +1,11 @@
 //! Generated files, compiled by the tools of their language and run.
 
+mod answers;
+mod demo;
 mod fixed;
 mod float;
+mod host;
+mod programs;
 mod proofs;
 mod samples;
 mod target;

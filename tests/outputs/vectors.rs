@@ -7,7 +7,7 @@ use shiftwright::range::Sample;
 use shiftwright::spec::Count;
 use shiftwright_tests::{Scratch, tool};
 
-use crate::float::WARNINGS;
+use crate::host::WARNINGS;
 use crate::samples;
 
 fn check(format: &NumberFormat, error: f64, passes: bool) {
