@@ -10,7 +10,11 @@
    where all are positive, shifted, and moved back. */
 static int32_t {{ stem }}_down32(int32_t x, uint32_t bits)
 {
-    return (int32_t)(((uint32_t)x ^ 0x80000000U) >> bits) - (int32_t)(0x80000000U >> bits);
+    const uint32_t middle = 0x80000000U;
+    const uint32_t shifted = ((uint32_t)x ^ middle) >> bits;
+    const uint32_t moved = middle >> bits;
+
+    return (int32_t)shifted - (int32_t)moved;
 }
 {% endif %}
 {% if shift64 %}
@@ -20,8 +24,10 @@ static int32_t {{ stem }}_down32(int32_t x, uint32_t bits)
 static int64_t {{ stem }}_down64(int64_t x, uint32_t bits)
 {
     const uint64_t middle = (uint64_t)1 << 63;
+    const uint64_t shifted = ((uint64_t)x ^ middle) >> bits;
+    const uint64_t moved = middle >> bits;
 
-    return (int64_t)(((uint64_t)x ^ middle) >> bits) - (int64_t)(middle >> bits);
+    return (int64_t)shifted - (int64_t)moved;
 }
 {% endif %}
 {% if root %}
@@ -42,7 +48,10 @@ static int64_t {{ stem }}_root(int64_t x)
         }
         bit >>= 2;
     }
-    return (int64_t)((rest > found) ? (found + 1U) : found);
+    if (rest > found) {
+        found += 1U;
+    }
+    return (int64_t)found;
 }
 
 /* Quotient rounded to nearest, one bit at a time. */
@@ -63,28 +72,47 @@ static int64_t {{ stem }}_quotient(uint64_t numerator, uint64_t denominator)
         }
         bit >>= 1;
     }
-    return (int64_t)((rest >= (denominator - rest)) ? (found + 1U) : found);
+    if (rest >= (denominator - rest)) {
+        found += 1U;
+    }
+    return (int64_t)found;
 }
 {% endif %}
 {% for f in formulas %}
 
 static {{ f.x }} {{ f.stem }}_held({{ f.x }} {{ argument }})
 {
-    return ({{ argument }} < {{ f.upper }}_FROM) ? ({{ f.x }}){{ f.upper }}_FROM
-         : (({{ argument }} > {{ f.upper }}_TO) ? ({{ f.x }}){{ f.upper }}_TO : {{ argument }});
+    {{ f.x }} inside = {{ argument }};
+
+    if (inside < {{ f.upper }}_FROM) {
+        inside = {{ f.upper }}_FROM;
+    } else if (inside > {{ f.upper }}_TO) {
+        inside = {{ f.upper }}_TO;
+    } else {
+        /* Inside already. */
+    }
+    return inside;
 }
 
 {{ f.y }} {{ f.stem }}({{ f.x }} {{ argument }})
 {
 {% for line in f.value %}
+{% if line %}
     {{ line }}
+{% else %}
+
+{% endif %}
 {% endfor %}
 }
 
 int64_t {{ f.stem }}_slope({{ f.x }} {{ argument }})
 {
 {% for line in f.slope %}
+{% if line %}
     {{ line }}
+{% else %}
+
+{% endif %}
 {% endfor %}
 }
 
@@ -143,8 +171,13 @@ static {{ stem }}_status {{ f.stem }}_search({{ f.y }} value, {{ f.x }} from, {{
 
         for (step = 0; step < {{ f.halvings }}; step++) {
             /* Moved up by the lower end, so that the halving is of a positive number. */
-            const int64_t middle = low + (int64_t)((uint64_t)(high - low) >> 1);
-            const int under = ((int64_t){{ f.stem }}(({{ f.x }})middle) < wanted) ? 1 : 0;
+            uint64_t part = (uint64_t)(high - low);
+            int64_t middle;
+            int under;
+
+            part >>= 1;
+            middle = low + (int64_t)part;
+            under = ((int64_t){{ f.stem }}(({{ f.x }})middle) < wanted) ? 1 : 0;
             if (under == rising) {
                 low = middle;
             } else {

@@ -33,48 +33,48 @@ static {{ type }} {{ stem }}_root({{ type }} x)
 {
     const {{ bits }} top = ({{ bits }})1 << {{ fraction }};
     {{ stem }}_word word;
-    {{ bits }} rest;
-    {{ bits }} found = 0;
-    {{ bits }} twice = 0;
-    {{ bits }} bit = top << 1;
-    int32_t exponent;
 
-    if (!(x > {{ zero }})) {
-        return {{ zero }};
-    }
     word.number = x;
-    exponent = (int32_t)(word.bits >> {{ fraction }});
-    rest = word.bits & (top - 1U);
-    if (exponent > {{ infinite }}) {
-        return x; /* infinity */
-    }
-    if (exponent == 0) {
-        exponent = 1;
-        while (rest < top) {
+    if (!(x > {{ zero }})) {
+        word.number = {{ zero }};
+    } else if (word.bits < ({{ bits }}){{ infinite }}) {
+        {{ bits }} rest = word.bits & (top - 1U);
+        {{ bits }} found = 0;
+        {{ bits }} twice = 0;
+        {{ bits }} bit = top << 1;
+        int32_t exponent = (int32_t)(word.bits >> {{ fraction }});
+
+        if (exponent == 0) {
+            exponent = 1;
+            while (rest < top) {
+                rest <<= 1;
+                exponent -= 1;
+            }
+        } else {
+            rest |= top;
+        }
+        /* The exponent of the root is half that of x: keep the bias even. */
+        exponent += {{ bias }};
+        if ((exponent % 2) != 0) {
             rest <<= 1;
-            exponent -= 1;
         }
+        rest <<= 1;
+        while (bit != 0U) {
+            const {{ bits }} trial = twice + bit;
+            if (trial <= rest) {
+                twice = trial + bit;
+                rest -= trial;
+                found += bit;
+            }
+            rest <<= 1;
+            bit >>= 1;
+        }
+        found += found & 1U;
+        exponent = (exponent / 2) - 1;
+        word.bits = (found >> 1) + (({{ bits }})exponent * top);
     } else {
-        rest |= top;
+        /* Infinity is its own root. */
     }
-    /* The exponent of the root is half that of x: keep the bias even. */
-    exponent += {{ bias }};
-    if ((exponent % 2) != 0) {
-        rest <<= 1;
-    }
-    rest <<= 1;
-    while (bit != 0U) {
-        const {{ bits }} trial = twice + bit;
-        if (trial <= rest) {
-            twice = trial + bit;
-            rest -= trial;
-            found += bit;
-        }
-        rest <<= 1;
-        bit >>= 1;
-    }
-    found += found & 1U;
-    word.bits = (found >> 1) + (({{ bits }})((exponent / 2) - 1) * top);
     return word.number;
 }
 {% endif %}
@@ -83,14 +83,22 @@ static {{ type }} {{ stem }}_root({{ type }} x)
 {{ type }} {{ f.stem }}({{ type }} {{ argument }})
 {
 {% for line in f.value %}
+{% if line %}
     {{ line }}
+{% else %}
+
+{% endif %}
 {% endfor %}
 }
 
 {{ type }} {{ f.stem }}_slope({{ type }} {{ argument }})
 {
 {% for line in f.slope %}
+{% if line %}
     {{ line }}
+{% else %}
+
+{% endif %}
 {% endfor %}
 }
 
@@ -98,12 +106,14 @@ static {{ type }} {{ stem }}_root({{ type }} x)
 {
     {{ stem }}_status status = {{ upper }}_OK;
 
-    if (({{ argument }} >= {{ f.upper }}_FROM) && ({{ argument }} <= {{ f.upper }}_TO)) {
-        *value = {{ f.stem }}({{ argument }});
+    if ({{ argument }} >= {{ f.upper }}_FROM) {
+        if ({{ argument }} <= {{ f.upper }}_TO) {
+            *value = {{ f.stem }}({{ argument }});
+        } else {
+            status = {{ upper }}_ABOVE;
+        }
     } else if ({{ argument }} < {{ f.upper }}_FROM) {
         status = {{ upper }}_BELOW;
-    } else if ({{ argument }} > {{ f.upper }}_TO) {
-        status = {{ upper }}_ABOVE;
     } else {
         status = {{ upper }}_NOT_A_NUMBER;
     }
@@ -142,12 +152,42 @@ static {{ type }} {{ f.stem }}_search({{ type }} value, {{ type }} from, {{ type
     for (step = 0; step < {{ newton }}; step++) {
         const {{ type }} slope = {{ f.stem }}_slope(x);
         if ((slope > {{ zero }}) || (slope < {{ zero }})) {
-            x = {{ stem }}_held(x + (value - {{ f.stem }}(x)) / slope, low, high);
+            x = {{ stem }}_held(x + ((value - {{ f.stem }}(x)) / slope), low, high);
         }
     }
     return x;
 }
 {% endif %}
+
+/* Control at which the formula gives the value, on the stretch between from
+   and to, on which it rises or falls; writes only when OK. */
+static {{ stem }}_status {{ f.stem }}_on({{ type }} value, {{ type }} from, {{ type }} to, int rising, {{ type }} *found)
+{
+    const {{ type }} first = (rising != 0) ? from : to;
+    const {{ type }} last = (rising != 0) ? to : from;
+    const {{ type }} bottom = {{ f.stem }}(first);
+    const {{ type }} top = {{ f.stem }}(last);
+    {{ stem }}_status status = {{ upper }}_OK;
+
+    if (value >= top) {
+        if (value <= (top + {{ f.upper }}_ROUNDING)) {
+            *found = last;
+        } else {
+            status = {{ upper }}_NO_SOLUTION;
+        }
+    } else if (value > bottom) {
+{% for line in f.solve %}
+        {{ line }}
+{% endfor %}
+    } else if (value >= (bottom - {{ f.upper }}_ROUNDING)) {
+        *found = first;
+    } else if (value < bottom) {
+        status = {{ upper }}_NO_SOLUTION;
+    } else {
+        status = {{ upper }}_NOT_A_NUMBER;
+    }
+    return status;
+}
 {% for i in f.inverses %}
 
 {{ stem }}_status {{ f.stem }}_{{ i.name }}({{ type }} value, {{ type }} *{{ argument }})
@@ -155,27 +195,8 @@ static {{ type }} {{ f.stem }}_search({{ type }} value, {{ type }} from, {{ type
 {% if i.same %}
     return {{ f.stem }}_inverse(value, {{ argument }});
 {% else %}
-    const {{ type }} least = {{ f.stem }}({{ i.first }});
-    const {{ type }} most = {{ f.stem }}({{ i.last }});
-    {{ stem }}_status status = {{ upper }}_OK;
-
-    /* The formula {{ i.way }} from {{ i.low }} to {{ i.high }}. */
-    if ((value >= (least - {{ f.upper }}_ROUNDING)) && (value <= (most + {{ f.upper }}_ROUNDING))) {
-        if (value <= least) {
-            *{{ argument }} = {{ i.first }};
-        } else if (value >= most) {
-            *{{ argument }} = {{ i.last }};
-        } else {
-{% for line in i.solve %}
-            {{ line }}
-{% endfor %}
-        }
-    } else if ((value < least) || (value > most)) {
-        status = {{ upper }}_NO_SOLUTION;
-    } else {
-        status = {{ upper }}_NOT_A_NUMBER;
-    }
-    return status;
+    /* The formula {{ i.way }} there. */
+    return {{ f.stem }}_on(value, {{ i.low }}, {{ i.high }}, {{ i.rising }}, {{ argument }});
 {% endif %}
 }
 {% endfor %}

@@ -150,12 +150,10 @@ macro_rules! format {
                 /// # Errors
                 /// [`OutOfRange::NotANumber`], [`OutOfRange::Below`] or [`OutOfRange::Above`].
                 pub fn checked(&self, control: $float) -> Result<$float, OutOfRange> {
-                    if (self.from..=self.to).contains(&control) {
-                        Ok(self.value(control))
+                    if control >= self.from {
+                        if control <= self.to { Ok(self.value(control)) } else { Err(OutOfRange::Above) }
                     } else if control < self.from {
                         Err(OutOfRange::Below)
-                    } else if control > self.to {
-                        Err(OutOfRange::Above)
                     } else {
                         Err(OutOfRange::NotANumber)
                     }
@@ -257,15 +255,13 @@ macro_rules! format {
                     let (least, most) = if branch.rising { (at_low, at_high) } else { (at_high, at_low) };
                     let (first, last) =
                         if branch.rising { (branch.low, branch.high) } else { (branch.high, branch.low) };
-                    if (least - self.rounding..=most + self.rounding).contains(&value) {
-                        Ok(if value <= least {
-                            first
-                        } else if value >= most {
-                            last
-                        } else {
-                            self.solve(value, branch)
-                        })
-                    } else if value < least || value > most {
+                    if value >= most {
+                        if value <= most + self.rounding { Ok(last) } else { Err(OutOfRange::NoSolution) }
+                    } else if value > least {
+                        Ok(self.solve(value, branch))
+                    } else if value >= least - self.rounding {
+                        Ok(first)
+                    } else if value < least {
                         Err(OutOfRange::NoSolution)
                     } else {
                         Err(OutOfRange::NotANumber)

@@ -76,6 +76,7 @@ struct Asked {
     format: &'static str,
     controls: Vec<f64>,
     values: Vec<f64>,
+    tolerance: f64,
     /// Stated error: the record's parts and the format's rounding.
     stated: f64,
     /// The record's remainder alone, which the worst point must come near.
@@ -117,6 +118,7 @@ fn ask(record: &Value, spec: &str, formula: &str, format: &'static str, loaded: 
         format,
         controls,
         values,
+        tolerance: number(record, &format!("formulas/{formula}/tolerance")),
         stated: part("remainder") + part("numerical") + part("written_digits") + rounding,
         remainder: part("remainder"),
         samples: samples.filter_map(|s| Some((s["control"].as_f64()?, s["exact"].as_f64()?))).collect(),
@@ -326,6 +328,7 @@ fn demo_files_compile_agree_bit_for_bit_and_hold_against_exact_levels() {
         // Double precision of the dense solver itself, which knows no shifts.
         let own = 64.0 * f64::EPSILON * exact.iter().fold(1.0, |a: f64, e| a.max(e.abs()));
         assert!(worst <= one.stated + own, "{key}: {worst:e} {:e}", one.stated);
+        assert!(worst <= one.tolerance * (1.0 + 1e-9) + own, "{key}: {worst:e} {:e}", one.tolerance);
         // The record rounds errors up to two digits; sums of parts need not meet at one point.
         assert!(
             worst >= 0.85 * one.remainder - (one.stated - one.remainder) - own,

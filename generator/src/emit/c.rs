@@ -72,7 +72,7 @@ fn float_context(outcome: &Outcome, stem: &str, formulas: &[Formula], header: &[
         bits => if wide { "uint64_t" } else { "uint32_t" },
         fraction => if wide { 52 } else { 23 },
         bias => if wide { 1023 } else { 127 },
-        infinite => if wide { 2046 } else { 254 },
+        infinite => if wide { "0x7ff0000000000000U" } else { "0x7f800000U" },
         zero => if wide { "0.0" } else { "0.0f" },
         half => if wide { "0.5" } else { "0.5f" },
         halvings => if wide {
@@ -101,22 +101,19 @@ fn one(outcome: &Outcome, stem: &str, formula: &Formula, float: &Float, wide: bo
         .map(|(name, words, branch, same)| {
             let end = |x: f64| format!("{upper}_{}", end(float, x));
             let (low, high) = (end(branch.low), end(branch.high));
-            let (first, last) = if branch.rising { (&low, &high) } else { (&high, &low) };
-            let solve = solve(float, &branch, stem, &lower, &upper, argument, wide, &low, &high);
             context! {
-                name, words, same, solve,
-                first => first.clone(),
-                last => last.clone(),
-                low => low.clone(),
-                high => high.clone(),
+                name, words, same, low, high,
+                rising => u8::from(branch.rising),
                 way => if branch.rising { "rises" } else { "falls" },
             }
         })
         .collect();
     let (value, slope) = bodies(float, stem, &upper, argument, wide);
+    let solve = solve(float, stem, &lower, &upper, wide);
     context! {
         name,
         stem => lower,
+        solve,
         unit => unit_name(&formula.measured.unit),
         upper,
         constants => constants(outcome, formula, float, wide),
@@ -187,8 +184,9 @@ fn whole(wide: bool) -> impl Fn(u32) -> String {
 /// Statements of value and slope.
 fn bodies(float: &Float, stem: &str, upper: &str, argument: &str, wide: bool) -> (Vec<String>, Vec<String>) {
     let ty = if wide { "double" } else { "float" };
-    let print =
-        |expr: &Option<Expr>| expr.as_ref().map_or_else(|| number(0.0, wide), |e| e.print(&whole(wide)));
+    let print = |expr: &Option<Expr>| {
+        expr.as_ref().map_or_else(|| number(0.0, wide), |e| e.print_bracketed(&whole(wide)))
+    };
     let offset = |exprs: &[&Option<Expr>]| {
         if exprs.iter().any(|e| e.as_ref().is_some_and(|e| e.names().contains(&"d"))) {
             format!("const {ty} d = {argument} - {upper}_AT;")
@@ -227,7 +225,7 @@ fn bodies(float: &Float, stem: &str, upper: &str, argument: &str, wide: bool) ->
                 "/* Where the gap is closed it is the slope of the mean. */".to_owned(),
                 format!("if (half_gap > {}) {{", number(0.0, wide)),
                 format!("    const {ty} squared_slope = {};", print(&h1)),
-                format!("    slope = slope {sign} squared_slope / ({two} * half_gap);"),
+                format!("    slope = slope {sign} (squared_slope / ({two} * half_gap));"),
                 "}".to_owned(),
                 "return slope;".to_owned(),
             ];
@@ -236,52 +234,37 @@ fn bodies(float: &Float, stem: &str, upper: &str, argument: &str, wide: bool) ->
     }
 }
 
-#[allow(clippy::too_many_arguments, reason = "one place that spells a statement out of names")]
-fn solve(
-    float: &Float,
-    branch: &shiftwright_runtime::double::Branch,
-    stem: &str,
-    lower: &str,
-    upper: &str,
-    argument: &str,
-    wide: bool,
-    low: &str,
-    high: &str,
-) -> Vec<String> {
+/// Statements that put the control of a value inside a stretch into `*found`.
+fn solve(float: &Float, stem: &str, lower: &str, upper: &str, wide: bool) -> Vec<String> {
     let ty = if wide { "double" } else { "float" };
-    let held = |x: String| format!("*{argument} = {stem}_held({x}, {low}, {high});");
-    let rising = branch.rising;
+    let held = |x: &str| format!("*found = {stem}_held({x}, from, to);");
     let (two, four) = (whole(wide)(2), whole(wide)(4));
     match &float.form {
         FloatForm::Polynomial(c) if !float.searches() => match (float.degree(), c.as_slice()) {
-            (1, _) => vec![held(format!("{upper}_AT + (value - {upper}_C0) / {upper}_C1"))],
+            (1, _) => vec![held(&format!("{upper}_AT + ((value - {upper}_C0) / {upper}_C1)"))],
             (_, [_, c1, c2, ..]) if *c1 == 0.0 => {
-                let sign = if rising == (*c2 > 0.0) { '+' } else { '-' };
+                let plus = if *c2 > 0.0 { "rising != 0" } else { "rising == 0" };
                 vec![
                     format!("const {ty} d = {stem}_root((value - {upper}_C0) / {upper}_C2);"),
-                    held(format!("{upper}_AT {sign} d")),
+                    held(&format!("({plus}) ? ({upper}_AT + d) : ({upper}_AT - d)")),
                 ]
             }
             (_, [_, c1, ..]) => {
-                let sign = if rising { "" } else { "-" };
-                let x = if (*c1 > 0.0) == rising {
-                    format!("{upper}_AT + {two} * rise / ({upper}_C1 + slope)")
-                } else {
-                    format!("{upper}_AT + (slope - {upper}_C1) / ({two} * {upper}_C2)")
-                };
+                let alike = if *c1 > 0.0 { "rising != 0" } else { "rising == 0" };
                 vec![
                     format!("const {ty} rise = value - {upper}_C0;"),
                     format!(
-                        "const {ty} slope = {sign}{stem}_root({upper}_C1 * {upper}_C1 + {four} * {upper}_C2 * rise);"
+                        "const {ty} root = {stem}_root(({upper}_C1 * {upper}_C1) + (({four} * {upper}_C2) * rise));"
                     ),
-                    held(x),
+                    format!("const {ty} slope = (rising != 0) ? root : -root;"),
+                    "/* The quotient in which nothing cancels. */".to_owned(),
+                    format!("const {ty} d = ({alike}) ? (({two} * rise) / ({upper}_C1 + slope))"),
+                    format!("    : ((slope - {upper}_C1) / ({two} * {upper}_C2));"),
+                    held(&format!("{upper}_AT + d")),
                 ]
             }
-            _ => vec![held(format!("{upper}_AT"))],
+            _ => vec![held(&format!("{upper}_AT"))],
         },
-        _ => {
-            let rising = u8::from(rising);
-            vec![held(format!("{lower}_search(value, {low}, {high}, {rising})"))]
-        }
+        _ => vec![held(&format!("{lower}_search(value, from, to, rising)"))],
     }
 }

@@ -52,28 +52,33 @@ impl Expr {
     /// is a right operand of a product, so that the printed order is the tree's.
     #[must_use]
     pub fn print(&self, whole: &dyn Fn(u32) -> String) -> String {
+        self.printed(whole, false)
+    }
+
+    /// As [`print`](Self::print), with brackets also round every product inside a
+    /// sum, for readers who want no precedence of operators taken for granted.
+    #[must_use]
+    pub fn print_bracketed(&self, whole: &dyn Fn(u32) -> String) -> String {
+        self.printed(whole, true)
+    }
+
+    fn printed(&self, whole: &dyn Fn(u32) -> String, products: bool) -> String {
+        let plain = |e: &Self| e.printed(whole, products);
+        let bracketed = |e: &Self| format!("({})", e.printed(whole, products));
         match self {
             Self::Name(name) => name.clone(),
             Self::Whole(n) => whole(*n),
             Self::Add(a, b) => {
-                let right = if matches!(**b, Self::Add(..)) {
-                    format!("({})", b.print(whole))
-                } else {
-                    b.print(whole)
-                };
-                format!("{} + {right}", a.print(whole))
+                let left = if products && matches!(**a, Self::Mul(..)) { bracketed(a) } else { plain(a) };
+                let sum = matches!(**b, Self::Add(..));
+                let right =
+                    if sum || (products && matches!(**b, Self::Mul(..))) { bracketed(b) } else { plain(b) };
+                format!("{left} + {right}")
             }
             Self::Mul(a, b) => {
-                let left = if matches!(**a, Self::Add(..)) {
-                    format!("({})", a.print(whole))
-                } else {
-                    a.print(whole)
-                };
-                let right = if matches!(**b, Self::Add(..) | Self::Mul(..)) {
-                    format!("({})", b.print(whole))
-                } else {
-                    b.print(whole)
-                };
+                let left = if matches!(**a, Self::Add(..)) { bracketed(a) } else { plain(a) };
+                let right =
+                    if matches!(**b, Self::Add(..) | Self::Mul(..)) { bracketed(b) } else { plain(b) };
                 format!("{left} * {right}")
             }
         }
@@ -150,6 +155,15 @@ mod tests {
         assert_eq!(print(&[0.0, 1.0, 0.0]).as_deref(), Some("c0 + d * c1"));
         assert_eq!(print(&[1.0, 0.0, 1.0, 0.0, 1.0]).as_deref(), Some("c0 + d * (d * (c2 + d * (d * c4)))"));
         assert_eq!(print(&[0.0, 0.0]).as_deref(), Some("c0"));
+    }
+
+    #[test]
+    fn brackets_may_stand_round_every_product() {
+        let print = |c: &[f64]| horner_slope(&names(), c, "d").map(|e| e.print_bracketed(&whole));
+        assert_eq!(
+            print(&[1.0, 1.0, 1.0, 1.0]).as_deref(),
+            Some("c1 + (d * ((2.0 * c2) + (d * (3.0 * c3))))")
+        );
     }
 
     #[test]

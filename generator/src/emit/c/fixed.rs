@@ -171,7 +171,7 @@ fn climb(ladder: &Ladder, name: &str, stem: &str, prefix: &str, wide: bool) -> V
         ladder.rungs.iter().rposition(|r| *r != Rung { constant: 0, before: 0, shift: 0 }).unwrap_or(0);
     let mut out = vec![format!("{ty} {name} = {prefix}{used};")];
     for (k, rung) in ladder.rungs.iter().enumerate().take(used).rev() {
-        let product = format!("k * {name}");
+        let product = format!("(k * {name})");
         let shifted = if rung.shift == 0 {
             product
         } else {
@@ -220,7 +220,8 @@ fn bodies(fixed: &Fixed, stem: &str, lower: &str, upper: &str, argument: &str) -
             let sign = if *upper { '+' } else { '-' };
             let mut a =
                 climbs(true, &[(mean, "mean", "MEAN_"), (half_gap_squared, "squared", "HALF_GAP_SQUARED_")]);
-            a.push(format!("return ({y})(mean {sign} {stem}_root(squared));"));
+            a.push(format!("mean {sign}= {stem}_root(squared);"));
+            a.push(format!("return ({y})mean;"));
             let mut b = climbs(
                 true,
                 &[

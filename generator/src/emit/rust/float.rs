@@ -1,7 +1,6 @@
 //! Rust modules of floating-point formulas.
 
 use super::*;
-use shiftwright_runtime::double::Branch;
 
 /// A literal with its sign.
 fn number(value: f64, wide: bool) -> Result<TokenStream> {
@@ -76,12 +75,14 @@ pub(super) fn module(outcome: &Outcome, formula: &Formula, float: &Float, wide: 
             #[doc = ""]
             #[doc = " `NotANumber`, `Below` or `Above`."]
             pub fn checked(#argument: #ty) -> Result<#ty, OutOfRange> {
-                if (FROM..=TO).contains(&#argument) {
-                    Ok(value(#argument))
+                if #argument >= FROM {
+                    if #argument <= TO {
+                        Ok(value(#argument))
+                    } else {
+                        Err(OutOfRange::Above)
+                    }
                 } else if #argument < FROM {
                     Err(OutOfRange::Below)
-                } else if #argument > TO {
-                    Err(OutOfRange::Above)
                 } else {
                     Err(OutOfRange::NotANumber)
                 }
@@ -277,24 +278,34 @@ fn values(float: &Float, ty: &Ident, argument: &Ident) -> Result<TokenStream> {
 fn inverses(float: &Float, ty: &Ident) -> Result<TokenStream> {
     let mut out = TokenStream::new();
     for (name, words, branch, same) in branches(float) {
-        out.extend(if same {
-            let name = ident(name);
+        let name = ident(name);
+        let (about, body) = if same {
             let about = doc(&format!("As [`inverse`], on the stretch of the range {words}."));
-            quote! {
-                #about
-                #[doc = ""]
-                #[doc = " # Errors"]
-                #[doc = ""]
-                #[doc = " `NotANumber` or `NoSolution`."]
-                pub fn #name(value: #ty) -> Result<#ty, OutOfRange> {
-                    inverse(value)
-                }
-            }
+            (quote! { #about }, quote! { inverse(value) })
         } else {
-            inverse(float, name, words, &branch, ty)?
+            let (low, high) = (ident(&end(float, branch.low)), ident(&end(float, branch.high)));
+            let about = doc(&format!(
+                "Control at which the formula gives `value`, on the stretch of the range {words}."
+            ));
+            let way = if branch.rising { "rises" } else { "falls" };
+            let way = doc(&format!("There it {way} from [`{low}`] to [`{high}`]."));
+            let rising = branch.rising;
+            (quote! { #about #way }, quote! { on(value, #low, #high, #rising) })
+        };
+        out.extend(quote! {
+            #about
+            #[doc = ""]
+            #[doc = " # Errors"]
+            #[doc = ""]
+            #[doc = " `NotANumber` or `NoSolution`."]
+            pub fn #name(value: #ty) -> Result<#ty, OutOfRange> {
+                #body
+            }
         });
     }
+    let on = on(float, ty);
     out.extend(quote! {
+        #on
         fn held(x: #ty, low: #ty, high: #ty) -> #ty {
             if x < low {
                 low
@@ -337,81 +348,68 @@ fn inverses(float: &Float, ty: &Ident) -> Result<TokenStream> {
     Ok(out)
 }
 
-fn inverse(float: &Float, name: &str, words: &str, branch: &Branch, ty: &Ident) -> Result<TokenStream> {
-    let name = ident(name);
-    let (low, high) = (ident(&end(float, branch.low)), ident(&end(float, branch.high)));
-    let (first, last) = if branch.rising { (&low, &high) } else { (&high, &low) };
-    let rising = branch.rising;
+/// The inverse on a stretch, which the public ones share.
+fn on(float: &Float, ty: &Ident) -> TokenStream {
     let solved = match &float.form {
         FloatForm::Polynomial(c) if !float.searches() => {
             let n = c.len();
             match (float.degree(), c.as_slice()) {
                 (1, _) => {
                     let unpack = unpack("c", "COEFFICIENTS", n, &["c0", "c1"]);
-                    quote! { #unpack Ok(held(AT + (value - c0) / c1, #low, #high)) }
+                    quote! { #unpack Ok(held(AT + (value - c0) / c1, from, to)) }
                 }
                 (_, [_, c1, c2, ..]) if *c1 == 0.0 => {
                     let unpack = unpack("c", "COEFFICIENTS", n, &["c0", "c2"]);
-                    let sign = if rising == (*c2 > 0.0) {
-                        quote! { + }
-                    } else {
-                        quote! { - }
-                    };
-                    quote! { #unpack Ok(held(AT #sign root((value - c0) / c2), #low, #high)) }
+                    let [plus, minus] = [quote! { AT + d }, quote! { AT - d }];
+                    let (first, second) = if *c2 > 0.0 { (plus, minus) } else { (minus, plus) };
+                    quote! {
+                        #unpack
+                        let d = root((value - c0) / c2);
+                        Ok(held(if rising { #first } else { #second }, from, to))
+                    }
                 }
                 (_, [_, c1, ..]) => {
                     let unpack = unpack("c", "COEFFICIENTS", n, &["c0", "c1", "c2"]);
-                    let sign = if rising {
-                        quote! {}
-                    } else {
-                        quote! { - }
-                    };
+                    let [alike, other] =
+                        [quote! { 2.0 * rise / (c1 + slope) }, quote! { (slope - c1) / (2.0 * c2) }];
                     // The quotient in which nothing cancels.
-                    let x = if (*c1 > 0.0) == rising {
-                        quote! { AT + 2.0 * rise / (c1 + slope) }
-                    } else {
-                        quote! { AT + (slope - c1) / (2.0 * c2) }
-                    };
+                    let (first, second) = if *c1 > 0.0 { (alike, other) } else { (other, alike) };
                     quote! {
                         #unpack
                         let rise = value - c0;
-                        let slope = #sign root(c1 * c1 + 4.0 * c2 * rise);
-                        Ok(held(#x, #low, #high))
+                        let root = root(c1 * c1 + 4.0 * c2 * rise);
+                        let slope = if rising { root } else { -root };
+                        let d = if rising { #first } else { #second };
+                        Ok(held(AT + d, from, to))
                     }
                 }
-                _ => quote! { Ok(AT) },
+                _ => quote! { Ok(held(AT, from, to)) },
             }
         }
-        _ => quote! { Ok(held(search(value, #low, #high, #rising), #low, #high)) },
+        _ => quote! { Ok(held(search(value, from, to, rising), from, to)) },
     };
-    let about =
-        doc(&format!("Control at which the formula gives `value`, on the stretch of the range {words}."));
-    let way =
-        doc(&format!("There it {} from [`{low}`] to [`{high}`].", if rising { "rises" } else { "falls" }));
-    Ok(quote! {
-        #about
-        #way
-        #[doc = ""]
-        #[doc = " # Errors"]
-        #[doc = ""]
-        #[doc = " `NotANumber` or `NoSolution`."]
-        pub fn #name(value: #ty) -> Result<#ty, OutOfRange> {
-            let (least, most) = (self::value(#first), self::value(#last));
-            if (least - ROUNDING..=most + ROUNDING).contains(&value) {
-                if value <= least {
-                    Ok(#first)
-                } else if value >= most {
-                    Ok(#last)
+    quote! {
+        #[doc = " The inverse on the stretch between `from` and `to`, on which the formula rises or falls."]
+        fn on(value: #ty, from: #ty, to: #ty, rising: bool) -> Result<#ty, OutOfRange> {
+            let (first, last) = if rising { (from, to) } else { (to, from) };
+            let (bottom, top) = (self::value(first), self::value(last));
+            if value >= top {
+                if value <= top + ROUNDING {
+                    Ok(last)
                 } else {
-                    #solved
+                    Err(OutOfRange::NoSolution)
                 }
-            } else if value < least || value > most {
+            } else if value > bottom {
+                #solved
+            } else if value >= bottom - ROUNDING {
+                Ok(first)
+            } else if value < bottom {
                 Err(OutOfRange::NoSolution)
             } else {
                 Err(OutOfRange::NotANumber)
             }
         }
-    })
+    }
 }
 
 /// The square root, as in the runtime crate.
