@@ -256,7 +256,9 @@ fn hostile_text_ends_soon_in_a_message() {
             assert!(!long, "case {index} {head}: a message is too long");
         }
         let taken = begin.elapsed().as_secs_f64();
-        assert!(taken < 1.0, "case {index} takes {taken} s: {head}");
+        // A hang or a blow-up takes minutes; a debug build on a loaded machine takes
+        // seconds where the program takes tenths.
+        assert!(taken < 20.0, "case {index} takes {taken} s: {head}");
     }
 }
 
