@@ -33,6 +33,16 @@ impl Numerical {
         let (at, (from, to)) = (spec.control.at, spec.control.within);
         let shift = formula.value == ValueKind::Shift;
         let mut ends = [0.0; 2];
+        if sum.overlap {
+            // Both envelopes change with the field by the series, so its own
+            // uncertainties tell how well they are known further out.
+            for (end, control) in ends.iter_mut().zip([from, to]) {
+                let d = (control - at).abs();
+                *end = sum.uncertainty.iter().rev().fold(0.0, |total, u| total * d + u);
+            }
+            let centre = if shift { 0.0 } else { sum.uncertainty[0] };
+            return Ok(Self { centre, ends, spans: [at - from, to - at] });
+        }
         for (end, control) in ends.iter_mut().zip([from, to]) {
             for term in &sum.levels {
                 let number = term.settled.level.number();
@@ -313,7 +323,7 @@ fn minimax(
 /// The pair form of the first level of the sum; everything else goes into its
 /// mean, and its own partner, where that stands in the sum too, into both.
 fn pair_form(formula: &Formula, sum: &Sum) -> Result<Proposed> {
-    let Some(first) = sum.levels.first() else {
+    let Some(first) = sum.levels.first().filter(|_| !sum.overlap) else {
         return Err(Error::spec(
             Diagnostic::new("no-pair", "a pair form needs a level").at(Some(formula.place.clone())),
         ));

@@ -100,23 +100,29 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
             sums.iter().map(|sum| move |control: f64| sum.known_change(at, control)).collect();
         let mut followed = Vec::with_capacity(sums.len());
         for ((formula, sum), known_change) in spec.formulas.iter().zip(&sums).zip(&known) {
-            let terms = sum
-                .levels
-                .iter()
-                .map(|term| range::Term {
-                    times: term.times(),
-                    system: &term.system,
-                    level: &term.settled.level,
-                })
-                .collect();
-            followed.push(range::follow(&range::Request {
-                at,
-                within: spec.control.within,
-                terms,
-                known_change,
-                base: if formula.value == ValueKind::Shift { 0.0 } else { sum.series[0] },
-                tolerance: formula.tolerance,
-            })?);
+            let base = if formula.value == ValueKind::Shift { 0.0 } else { sum.series[0] };
+            let (within, tolerance) = (spec.control.within, formula.tolerance);
+            followed.push(match sum.levels.as_slice() {
+                [one, other] if sum.overlap => range::follow_overlap(&range::OverlapRequest {
+                    at,
+                    within,
+                    systems: [&one.system, &other.system],
+                    levels: [&one.settled.level, &other.settled.level],
+                    base,
+                    tolerance,
+                })?,
+                levels => {
+                    let terms = levels
+                        .iter()
+                        .map(|term| range::Term {
+                            times: term.times(),
+                            system: &term.system,
+                            level: &term.settled.level,
+                        })
+                        .collect();
+                    range::follow(&range::Request { at, within, terms, known_change, base, tolerance })?
+                }
+            });
         }
         let mut measured = Vec::with_capacity(sums.len());
         for (idx, formula) in spec.formulas.iter().enumerate() {
@@ -194,15 +200,20 @@ impl<'a> Cache<'a> {
 
     /// The levels and known terms of a formula, added up.
     fn sum(&mut self, formula: &Formula, first: usize) -> Result<Sum> {
-        let Target::Sum(terms) = &formula.target else {
-            return Err(Error::spec(
-                Diagnostic::new(
-                    "not-built",
-                    format!("`{}` asks for an overlap, which is read but not yet measured", formula.name),
-                )
-                .at(Some(formula.place.clone()))
-                .action("use `sum`"),
-            ));
+        let terms = match &formula.target {
+            Target::Sum(terms) => terms,
+            Target::Overlap(one, other) => {
+                let mut term = |reference: &LevelRef| -> Result<LevelTerm> {
+                    Ok(LevelTerm {
+                        system: self.spec.systems[reference.system].name.clone(),
+                        reference: reference.clone(),
+                        weight: 1.0,
+                        conversion: 1.0,
+                        settled: self.level(reference, formula.order, first)?,
+                    })
+                };
+                return Sum::overlap([term(one)?, term(other)?]);
+            }
         };
         let mut levels = Vec::new();
         let mut known = Vec::new();

@@ -5,10 +5,11 @@
 
 use std::rc::Rc;
 
-use super::settle::Settled;
+use super::settle::{SAFETY, Settled};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::expr::Tree;
 use crate::outcome::{ContributionOutcome, MixingOutcome, Note};
+use crate::series;
 use crate::spec::{self, LevelRef};
 use crate::units::{Unit, energy_factor};
 
@@ -47,6 +48,8 @@ pub struct Sum {
     pub uncertainty: [f64; 5],
     /// Why each is exactly zero, where it is.
     pub zero: [Option<String>; 5],
+    /// True for the squared overlap of the two levels instead of their sum.
+    pub overlap: bool,
 }
 
 /// The conversion from a model's unit to a formula's.
@@ -129,7 +132,33 @@ impl Sum {
                 uncertainty[power] = uncertainty[power].max(f64::EPSILON * size[power]);
             }
         }
-        Ok(Self { levels, known, series, uncertainty, zero })
+        Ok(Self { levels, known, series, uncertainty, zero, overlap: false })
+    }
+
+    /// The squared overlap of two levels. The change with refinement is that of
+    /// the whole overlap series, solved again in the coarser models.
+    ///
+    /// # Errors
+    /// Those of the overlap series.
+    pub fn overlap(levels: [LevelTerm; 2]) -> Result<Self> {
+        let [a, b] = &levels;
+        let fine = series::overlap(&a.settled.level, &b.settled.level)?;
+        let (mut uncertainty, zero) = (fine.uncertainty, fine.zero);
+        if a.settled.coarse.is_some() || b.settled.coarse.is_some() {
+            let coarse = |term: &LevelTerm| {
+                let built = term.settled.coarse.as_ref().unwrap_or(&term.settled.built);
+                series::solve(built, term.reference.level)
+            };
+            let before = series::overlap(&coarse(a)?, &coarse(b)?)?;
+            for power in 0..5 {
+                if zero[power].is_none() {
+                    let change = (fine.coefficients[power] - before.coefficients[power]).abs();
+                    uncertainty[power] = uncertainty[power].max(SAFETY * change);
+                }
+            }
+        }
+        let series = fine.coefficients;
+        Ok(Self { levels: levels.into(), known: Vec::new(), series, uncertainty, zero, overlap: true })
     }
 
     /// The known terms' change from the operating point.
