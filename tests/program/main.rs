@@ -1,5 +1,6 @@
 //! The command line as its users meet it.
 
 mod calls;
+mod demo;
 mod hostile;
 mod schema;
