@@ -171,14 +171,15 @@ static {{ stem }}_status {{ f.stem }}_search({{ f.y }} value, {{ f.x }} from, {{
 
         for (step = 0; step < {{ f.halvings }}; step++) {
             /* Moved up by the lower end, so that the halving is of a positive number. */
-            uint64_t part = (uint64_t)(high - low);
+            const int64_t width = high - low;
+            uint64_t part = (uint64_t)width;
             int64_t middle;
-            int under;
+            int64_t there;
 
             part >>= 1;
             middle = low + (int64_t)part;
-            under = ((int64_t){{ f.stem }}(({{ f.x }})middle) < wanted) ? 1 : 0;
-            if (under == rising) {
+            there = (int64_t){{ f.stem }}(({{ f.x }})middle);
+            if ((rising != 0) ? (there < wanted) : (there >= wanted)) {
                 low = middle;
             } else {
                 high = middle;

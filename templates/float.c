@@ -141,8 +141,9 @@ static {{ type }} {{ f.stem }}_search({{ type }} value, {{ type }} from, {{ type
 
     for (step = 0; step < {{ halvings }}; step++) {
         const {{ type }} middle = {{ half }} * (low + high);
-        const int under = ({{ f.stem }}(middle) < value) ? 1 : 0;
-        if (under == rising) {
+        const {{ type }} there = {{ f.stem }}(middle);
+
+        if ((rising != 0) ? (there < value) : (there >= value)) {
             low = middle;
         } else {
             high = middle;

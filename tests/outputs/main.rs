@@ -1,5 +1,6 @@
 //! Generated files, compiled by the tools of their language and run.
 
+mod analysis;
 mod answers;
 mod demo;
 mod fixed;
