@@ -6,28 +6,22 @@
 #include "{{ stem }}.h"
 {% if shift32 %}
 
-/* Shift to the right that rounds down for negative numbers too: moved up to
-   where all are positive, shifted, and moved back. */
+/* Shift to the right of a number that is not negative. */
 static int32_t {{ stem }}_down32(int32_t x, uint32_t bits)
 {
-    const uint32_t middle = 0x80000000U;
-    const uint32_t shifted = ((uint32_t)x ^ middle) >> bits;
-    const uint32_t moved = middle >> bits;
+    const uint32_t shifted = (uint32_t)x >> bits;
 
-    return (int32_t)shifted - (int32_t)moved;
+    return (int32_t)shifted;
 }
 {% endif %}
 {% if shift64 %}
 
-/* Shift to the right that rounds down for negative numbers too: moved up to
-   where all are positive, shifted, and moved back. */
+/* Shift to the right of a number that is not negative. */
 static int64_t {{ stem }}_down64(int64_t x, uint32_t bits)
 {
-    const uint64_t middle = (uint64_t)1 << 63;
-    const uint64_t shifted = ((uint64_t)x ^ middle) >> bits;
-    const uint64_t moved = middle >> bits;
+    const uint64_t shifted = (uint64_t)x >> bits;
 
-    return (int64_t)shifted - (int64_t)moved;
+    return (int64_t)shifted;
 }
 {% endif %}
 {% if root %}
@@ -38,8 +32,9 @@ static int64_t {{ stem }}_root(int64_t x)
     uint64_t rest = (x < 0) ? 0U : (uint64_t)x;
     uint64_t found = 0U;
     uint64_t bit = (uint64_t)1 << 62;
+    int step;
 
-    while (bit != 0U) {
+    for (step = 0; step < 32; step++) {
         if (rest >= (found + bit)) {
             rest -= found + bit;
             found = (found >> 1) + bit;
@@ -60,8 +55,9 @@ static int64_t {{ stem }}_quotient(uint64_t numerator, uint64_t denominator)
     uint64_t rest = 0U;
     uint64_t found = 0U;
     uint64_t bit = (uint64_t)1 << 63;
+    int step;
 
-    while (bit != 0U) {
+    for (step = 0; step < 64; step++) {
         rest <<= 1;
         if ((numerator & bit) != 0U) {
             rest += 1U;
@@ -147,8 +143,8 @@ static int64_t {{ f.stem }}_miss({{ f.x }} {{ argument }}, int64_t wanted)
     return (miss < 0) ? -miss : miss;
 }
 
-/* Halves the stretch a fixed number of times and takes the nearer of the two
-   counts that are left. */
+/* Finds the last count that is still under the value, bit by bit from the top,
+   and takes the nearer of it and the next. */
 static {{ stem }}_status {{ f.stem }}_search({{ f.y }} value, {{ f.x }} from, {{ f.x }} to, int rising, {{ f.x }} *found)
 {
     const int64_t wanted = (int64_t)value;
@@ -165,25 +161,27 @@ static {{ stem }}_status {{ f.stem }}_search({{ f.y }} value, {{ f.x }} from, {{
     } else if (wanted >= most) {
         *found = last;
     } else {
-        int64_t low = (int64_t)from;
-        int64_t high = (int64_t)to;
-        int step;
+        const {{ f.work }} end = ({{ f.work }})to;
+        {{ f.work }} low = ({{ f.work }})from;
+        {{ f.work }} high;
+        {{ f.work }} bit = {{ f.top }};
 
-        for (step = 0; step < {{ f.halvings }}; step++) {
-            /* Moved up by the lower end, so that the halving is of a positive number. */
-            const int64_t width = high - low;
-            uint64_t part = (uint64_t)width;
-            int64_t middle;
-            int64_t there;
+        while (bit > 0) {
+            const {{ f.work }} next = low + bit;
 
-            part >>= 1;
-            middle = low + (int64_t)part;
-            there = (int64_t){{ f.stem }}(({{ f.x }})middle);
-            if ((rising != 0) ? (there < wanted) : (there >= wanted)) {
-                low = middle;
-            } else {
-                high = middle;
+            if (next < end) {
+                const {{ f.y }} there = {{ f.stem }}(({{ f.x }})next);
+
+                if ((rising != 0) ? (there < value) : (there >= value)) {
+                    low = next;
+                }
             }
+            bit /= 2;
+        }
+        if (low < end) {
+            high = low + 1;
+        } else {
+            high = low;
         }
         if ({{ f.stem }}_miss(({{ f.x }})low, wanted) <= {{ f.stem }}_miss(({{ f.x }})high, wanted)) {
             *found = ({{ f.x }})low;

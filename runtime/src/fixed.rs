@@ -84,8 +84,8 @@ pub struct Formula<'a> {
     pub origin: i64,
     /// Bound on the rounding of `value`, whole steps.
     pub rounding: i64,
-    /// Halvings that an inverse takes: the bits of the control.
-    pub halvings: u32,
+    /// Bits of the control, at most 32; an inverse takes as many steps.
+    pub bits: u32,
     /// The closed form.
     pub form: Form<'a>,
 }
@@ -187,16 +187,20 @@ impl Formula<'_> {
         }
     }
 
+    /// The last count that is still under the value, bit by bit from the top,
+    /// then the nearer of it and the next.
     fn search(&self, value: i64, branch: &Branch) -> i64 {
-        let (mut low, mut high) = (branch.low, branch.high);
-        for _ in 0..self.halvings {
-            let middle = low + ((high - low) >> 1);
-            if (self.value(middle) < value) == branch.rising {
-                low = middle;
-            } else {
-                high = middle;
+        let mut low = branch.low;
+        for bit in (0..self.bits.min(32)).rev() {
+            let next = low.saturating_add(1 << bit);
+            if next < branch.high {
+                let there = self.value(next);
+                if if branch.rising { there < value } else { there >= value } {
+                    low = next;
+                }
             }
         }
+        let high = if low < branch.high { low + 1 } else { low };
         let (under, over) = (self.value(low).abs_diff(value), self.value(high).abs_diff(value));
         if under <= over { low } else { high }
     }
@@ -234,7 +238,7 @@ mod tests {
         let value = [rung(100, 0, 0), rung(7, 0, 0)];
         let slope = [rung(7 << 16, 0, 0)];
         let form = Form::Polynomial { value: &value, slope: &slope };
-        let formula = Formula { from: -1000, to: 900, origin: 3, rounding: 1, halvings: 16, form };
+        let formula = Formula { from: -1000, to: 900, origin: 3, rounding: 1, bits: 16, form };
         let branch = Branch { low: -1000, high: 900, rising: true };
         for v in formula.value(-1000)..=formula.value(900) {
             let n = formula.inverse_on(v, &branch).expect("reached");

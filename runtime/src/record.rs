@@ -136,7 +136,7 @@ impl Fixed {
             to: self.to,
             origin: self.origin,
             rounding: self.rounding,
-            halvings: self.control_bits,
+            bits: self.control_bits,
             form,
         }
     }

@@ -39,7 +39,7 @@ fn reference(fixed: &Fixed) -> fixed::Formula<'_> {
         to: fixed.to,
         origin: fixed.origin,
         rounding: fixed.rounding,
-        halvings: fixed.control_bits,
+        bits: fixed.control_bits,
         form,
     }
 }
@@ -80,7 +80,7 @@ fn expected(formula: &Formula, at: f64) -> String {
     format!("{name} {sum:x}\n")
 }
 
-fn every_code(at: f64, value: (u32, f64), label: &str) {
+fn every_code(at: f64, control: (u32, f64), value: (u32, f64), label: &str) {
     let mut shapes = samples::every_shape(at);
     for shape in &mut shapes {
         // The first shape's level is too large for narrow values.
@@ -92,7 +92,7 @@ fn every_code(at: f64, value: (u32, f64), label: &str) {
     }
     let stem = "shapes_fixed";
     let outcome = samples::outcome("shapes", "F", at, shapes);
-    let formulas = samples::in_format(&outcome, &format((16, 0.01), value));
+    let formulas = samples::in_format(&outcome, &format(control, value));
     let scratch = Scratch::new(&format!("every-code-{label}"));
     for target in [Target::Rust, Target::C] {
         for source in emit::files(&outcome, target, stem, &formulas).expect("files are printed") {
@@ -119,13 +119,21 @@ fn every_code(at: f64, value: (u32, f64), label: &str) {
 
 #[test]
 fn every_code_of_a_16_bit_control_gives_the_same_32_bit_value() {
-    every_code(0.0, (32, 1e-3), "i32");
-    every_code(12.305, (32, 1e-3), "i32-at");
+    every_code(0.0, (16, 0.01), (32, 1e-3), "i32");
+    every_code(12.305, (16, 0.01), (32, 1e-3), "i32-at");
 }
 
 #[test]
 fn every_code_of_a_16_bit_control_gives_the_same_16_bit_value() {
-    every_code(12.3, (16, 0.01), "i16");
+    every_code(12.3, (16, 0.01), (16, 0.01), "i16");
+}
+
+/// An 8-bit control at every code, and a 32-bit control on a comb of 143,000 codes.
+#[test]
+fn narrow_and_wide_controls_give_the_same_values() {
+    every_code(0.0, (8, 0.5), (32, 1e-3), "i8-i32");
+    every_code(0.0, (8, 0.5), (8, 0.5), "i8-i8");
+    every_code(0.0, (32, 1e-6), (32, 1e-4), "i32-i32");
 }
 
 /// A step or width that cannot do is refused with one that would.

@@ -76,7 +76,7 @@ fn emulated_targets_give_the_bits_of_the_host() {
         to: n.to,
         origin: n.origin,
         rounding: n.rounding,
-        halvings: n.control_bits,
+        bits: n.control_bits,
         form: fixed::Form::Polynomial { value: &value.rungs, slope: &slope.rungs },
     };
     let (mut f, mut q) = (2_166_136_261_u32, 2_166_136_261_u32);

@@ -9,7 +9,7 @@
 use shiftwright_runtime::double;
 use shiftwright_runtime::fixed::{Branch, Rung, SLOPE_BITS};
 
-use super::bound;
+use super::bound::{self, Interval};
 use super::{Formula, Numbers, OwnRange};
 use crate::diagnostic::{Diagnostic, Error, Place, Result};
 use crate::form::Form;
@@ -295,11 +295,13 @@ fn bound_of(c: &[f64], reach: f64) -> f64 {
 
 /// The ladder of a polynomial.
 ///
-/// - `bits`: magnitudes stay below 2^bits;
+/// - `bits`: magnitudes stay below 2^bits, and what is shifted below 2^(bits - 1),
+///   so that a language without shifts of negative numbers can move it up by that;
 /// - `scale`: the lowest rung counts in units of 2^-scale.
 fn ladder(c: &[f64], reach: f64, bits: i32, scale: i32) -> Option<Ladder> {
     let degree = c.iter().rposition(|c| *c != 0.0).unwrap_or(0);
-    let limit = libm::scalbn(1.0, bits - 1);
+    // What is added before a shift takes up to three sixteenths.
+    let limit = 0.8125 * libm::scalbn(1.0, bits - 1);
     // Finest scale of each rung above the lowest: its product with any count stays inside.
     let mut scales = vec![scale; degree + 1];
     let mut finest = i32::MAX;
@@ -315,7 +317,7 @@ fn ladder(c: &[f64], reach: f64, bits: i32, scale: i32) -> Option<Ladder> {
     for k in 1..=degree {
         let below = *scales.get(k - 1)?;
         let slot = scales.get_mut(k)?;
-        *slot = (*slot).min(below + bits - 3);
+        *slot = (*slot).min(below + bits - 4);
         if *slot < below {
             return None;
         }
@@ -494,6 +496,20 @@ fn round_up(x: f64) -> String {
     text.parse::<f64>().map_or(text, |x| format!("{x:?}"))
 }
 
+/// All that a form can reach on an interval of the offset.
+fn enclosure(form: &Form, d: Interval) -> Interval {
+    let reached = |c: &[f64]| bound::nested(bound::DOUBLE, c, c, d, 0.0).0;
+    match form {
+        Form::Polynomial { coefficients } => reached(coefficients),
+        Form::Paired { mean, half_gap_squared, sign, .. } => {
+            let (mean, squared) = (reached(mean), reached(half_gap_squared));
+            let [near, far] = [squared.low, squared.high].map(|h| libm::sqrt(h.max(0.0)));
+            let (low, high) = if *sign > 0.0 { (near, far) } else { (-far, -near) };
+            Interval { low: mean.low + low, high: mean.high + high }
+        }
+    }
+}
+
 fn value_fits(
     measured: &FormulaOutcome,
     control: &ControlOutcome,
@@ -501,15 +517,13 @@ fn value_fits(
     limits: (f64, f64),
     rounding: f64,
 ) -> Result<()> {
+    let valid = &measured.valid;
     let (mut least, mut most) = (f64::INFINITY, f64::NEG_INFINITY);
-    for i in 0..=1024 {
-        let x = measured.valid.from + (measured.valid.to - measured.valid.from) * f64::from(i) / 1024.0;
-        let v = measured.form.value(x - control.at) / value.step;
-        (least, most) = (least.min(v), most.max(v));
+    for d in bound::cells(valid.from - control.at, valid.to - control.at) {
+        let reached = enclosure(&measured.form, d);
+        (least, most) = (least.min(reached.low / value.step), most.max(reached.high / value.step));
     }
-    // Between the points the formula may bulge: by at most an eighth of the
-    // largest second difference, far below one part in a hundred of its swing.
-    let margin = rounding + 1.0 + 0.01 * (most - least);
+    let margin = rounding + 1.0;
     if least - margin >= limits.0 && most + margin <= limits.1 {
         return Ok(());
     }

@@ -94,7 +94,9 @@ fn one(outcome: &Outcome, stem: &str, formula: &Formula, fixed: &Fixed, argument
         control_step => real(fixed.control_step),
         x => format!("int{}_t", fixed.control_bits),
         y => format!("int{}_t", fixed.value_bits),
-        halvings => fixed.control_bits,
+        // 32-bit counts may lie further apart than their own type holds.
+        work => if fixed.control_bits == 32 { "int64_t" } else { "int32_t" },
+        top => whole(1 << (fixed.control_bits - 1), fixed.control_bits == 32),
         constants => constants(outcome, formula, fixed),
         value, slope, inverses,
     };
@@ -129,10 +131,17 @@ fn constants(outcome: &Outcome, formula: &Formula, fixed: &Fixed) -> Vec<Value> 
                 whole(rung.constant, wide),
             );
             if rung.shift > 0 {
+                let lift = 1 << if wide { 62 } else { 30 };
                 push(
                     format!("{prefix}{k}_BEFORE"),
-                    "Added before the shift: half a unit, and a fraction of the coefficient.".into(),
-                    whole(rung.before, wide),
+                    "Added before the shift: half a unit, a fraction of the coefficient, and what keeps the sum positive."
+                        .into(),
+                    whole(rung.before + lift, wide),
+                );
+                push(
+                    format!("{prefix}{k}_LIFT"),
+                    "Taken off after the shift: what kept the sum positive.".into(),
+                    whole(lift >> rung.shift, wide),
                 );
                 push(format!("{prefix}{k}_SHIFT"), "Bits shifted out.".into(), format!("{}U", rung.shift));
             }
@@ -175,7 +184,9 @@ fn climb(ladder: &Ladder, name: &str, stem: &str, prefix: &str, wide: bool) -> V
         let shifted = if rung.shift == 0 {
             product
         } else {
-            format!("{stem}_down{bits}({product} + {prefix}{k}_BEFORE, {prefix}{k}_SHIFT)")
+            format!(
+                "({stem}_down{bits}({product} + {prefix}{k}_BEFORE, {prefix}{k}_SHIFT) - {prefix}{k}_LIFT)"
+            )
         };
         out.push(if rung.constant == 0 {
             format!("{name} = {shifted};")

@@ -380,46 +380,46 @@ fn inverses(fixed: &Fixed, x: &str, y: &str) -> Result<TokenStream> {
             }
         });
     }
-    let halvings = Literal::u32_unsuffixed(fixed.control_bits);
     let wide = if y == "i64" {
         quote! { value }
     } else {
         quote! { i64::from(value) }
     };
     let at = |end: TokenStream| quote! { i64::from(self::value(#end)) };
-    let (first, last, at_low, at_high) =
-        (at(quote! { bottom }), at(quote! { top }), at(quote! { low }), at(quote! { high }));
+    let (first, last) = (at(quote! { bottom }), at(quote! { top }));
+    let (at_low, at_high) = (at(quote! { low as #x_ty }), at(quote! { high as #x_ty }));
     // 32-bit counts may lie further apart than their own type holds.
-    let middle = if x == "i32" {
-        quote! { let middle = (i64::from(low) + i64::from(high)) >> 1; let middle = middle as i32; }
-    } else {
-        quote! { let middle = ((i32::from(low) + i32::from(high)) >> 1) as #x_ty; }
-    };
+    let (work, bits) = (ident(if x == "i32" { "i64" } else { "i32" }), fixed.control_bits);
+    let steps = Literal::u32_unsuffixed(bits);
     out.extend(quote! {
-        #[doc = " Halves the stretch a fixed number of times and takes the nearer of the two counts that are left."]
-        fn search(value: #y_ty, mut low: #x_ty, mut high: #x_ty, rising: bool) -> Result<#x_ty, OutOfRange> {
-            let (bottom, top) = if rising { (low, high) } else { (high, low) };
-            let value = #wide;
+        #[doc = " Finds the last count that is still under the value, bit by bit from the top, and"]
+        #[doc = " takes the nearer of it and the next."]
+        fn search(value: #y_ty, from: #x_ty, to: #x_ty, rising: bool) -> Result<#x_ty, OutOfRange> {
+            let (bottom, top) = if rising { (from, to) } else { (to, from) };
+            let wanted = #wide;
             let (least, most) = (#first, #last);
-            if value < least - ROUNDING || value > most + ROUNDING {
+            if wanted < least - ROUNDING || wanted > most + ROUNDING {
                 return Err(OutOfRange::NoSolution);
             }
-            if value <= least {
+            if wanted <= least {
                 return Ok(bottom);
             }
-            if value >= most {
+            if wanted >= most {
                 return Ok(top);
             }
-            for _ in 0..#halvings {
-                #middle
-                if (i64::from(self::value(middle)) < value) == rising {
-                    low = middle;
-                } else {
-                    high = middle;
+            let (mut low, end) = (#work::from(from), #work::from(to));
+            for bit in (0..#steps).rev() {
+                let next = low + (1 << bit);
+                if next < end {
+                    let there = self::value(next as #x_ty);
+                    if if rising { there < value } else { there >= value } {
+                        low = next;
+                    }
                 }
             }
-            let (under, over) = ((#at_low).abs_diff(value), (#at_high).abs_diff(value));
-            Ok(if under <= over { low } else { high })
+            let high = if low < end { low + 1 } else { low };
+            let (under, over) = ((#at_low).abs_diff(wanted), (#at_high).abs_diff(wanted));
+            Ok(if under <= over { low as #x_ty } else { high as #x_ty })
         }
     });
     Ok(out)
