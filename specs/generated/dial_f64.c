@@ -175,8 +175,9 @@ static double dial_f64_lower_search(double value, double from, double to, int ri
 
     for (step = 0; step < 30; step++) {
         const double middle = 0.5 * (low + high);
-        const int under = (dial_f64_lower(middle) < value) ? 1 : 0;
-        if (under == rising) {
+        const double there = dial_f64_lower(middle);
+
+        if ((rising != 0) ? (there < value) : (there >= value)) {
             low = middle;
         } else {
             high = middle;

@@ -249,8 +249,9 @@ static double dots_f64_gap_search(double value, double from, double to, int risi
 
     for (step = 0; step < 30; step++) {
         const double middle = 0.5 * (low + high);
-        const int under = (dots_f64_gap(middle) < value) ? 1 : 0;
-        if (under == rising) {
+        const double there = dots_f64_gap(middle);
+
+        if ((rising != 0) ? (there < value) : (there >= value)) {
             low = middle;
         } else {
             high = middle;

@@ -263,8 +263,9 @@ static double latch_f64_first_search(double value, double from, double to, int r
 
     for (step = 0; step < 30; step++) {
         const double middle = 0.5 * (low + high);
-        const int under = (latch_f64_first(middle) < value) ? 1 : 0;
-        if (under == rising) {
+        const double there = latch_f64_first(middle);
+
+        if ((rising != 0) ? (there < value) : (there >= value)) {
             low = middle;
         } else {
             high = middle;

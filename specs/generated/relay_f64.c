@@ -100,8 +100,9 @@ static double relay_f64_dressed_search(double value, double from, double to, int
 
     for (step = 0; step < 30; step++) {
         const double middle = 0.5 * (low + high);
-        const int under = (relay_f64_dressed(middle) < value) ? 1 : 0;
-        if (under == rising) {
+        const double there = relay_f64_dressed(middle);
+
+        if ((rising != 0) ? (there < value) : (there >= value)) {
             low = middle;
         } else {
             high = middle;
