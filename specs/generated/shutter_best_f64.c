@@ -3,9 +3,9 @@
  *
  * edge: level, in meV, against F, in kV/cm.
  *   edge = c0 + d*(c1 + d*c2), d = F
- *   c0 = 34.9329359333       +- 6.3e-14          meV
+ *   c0 = 34.9329359333       +- 8.4e-14          meV
  *   c1 = 0                   exact, by symmetry  meV/(kV/cm)
- *   c2 = -0.000542580794673  +- 7.4e-17          meV/(kV/cm)^2
+ *   c2 = -0.000542580794673  +- 8.7e-17          meV/(kV/cm)^2
  *   range: -60.0 to 60.0 kV/cm; it ends below for the reason `within` (as far as was
  *     asked), above for `within` (as far as was asked)
  *   largest error inside: 0.0015 meV (tolerance 0.01): remainder 0.0015, numerical

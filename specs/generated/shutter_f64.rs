@@ -2,9 +2,9 @@
 //
 // edge: level, in meV, against F, in kV/cm.
 //   edge = c0 + d*(c1 + d*c2), d = F
-//   c0 = 34.93440810453127       +- 6.3e-14          meV
+//   c0 = 34.93440810453128       +- 8.4e-14          meV
 //   c1 = 0                       exact, by symmetry  meV/(kV/cm)
-//   c2 = -0.0005459111401160414  +- 7.4e-17          meV/(kV/cm)^2
+//   c2 = -0.0005459111401160408  +- 8.7e-17          meV/(kV/cm)^2
 //   range: -60.0 to 60.0 kV/cm; it ends below for the reason `within` (as far as was
 //     asked), above for `within` (as far as was asked)
 //   largest error inside: 0.012 meV (tolerance 0.05): remainder 0.012, numerical 2.0e-12,
@@ -66,13 +66,13 @@ pub mod edge {
     pub const AT: f64 = 0.0;
 
     /// Level at the operating point, in meV.
-    pub const E0: f64 = 34.93440810453127;
+    pub const E0: f64 = 34.93440810453128;
 
     /// Bound on the rounding of [`value`], in meV.
     pub const ROUNDING: f64 = 3.871902802252136e-15;
 
     /// Coefficients by rising power of the offset, in `meV`, `meV/(kV/cm)`, `meV/(kV/cm)^2`.
-    pub const COEFFICIENTS: [f64; 3] = [34.93440810453127, 0.0, -0.0005459111401160414];
+    pub const COEFFICIENTS: [f64; 3] = [34.93440810453128, 0.0, -0.0005459111401160408];
 
     /// The formula, no check.
     #[must_use]

@@ -392,19 +392,98 @@ impl<'a, T: Scalar> Ladder<'a, T> {
         0.5 * (low.0 + high.0)
     }
 
-    /// The lowest `count` levels.
+    /// The lowest `count` levels: all at once by Lanczos iteration on the inverse
+    /// where that is certified, else one by one.
     ///
     /// # Errors
     /// As [`Ladder::level`].
     pub(super) fn lowest(&mut self, count: usize) -> Result<Vec<Eigenpair<T>>> {
+        let count = count.min(self.pencil.band.order);
+        if let Some(found) = self.lanczos(count) {
+            return Ok(found);
+        }
         let mut found: Vec<Eigenpair<T>> = Vec::with_capacity(count);
-        for number in 1..=count.min(self.pencil.band.order) {
+        for number in 1..=count {
             // Only near neighbours can contaminate a state.
             let from = found.len().saturating_sub(8);
             let pair = self.level(number, &found[from..])?;
             found.push(pair);
         }
         Ok(found)
+    }
+
+    /// Lanczos iteration on `(H - shift)^(-1)`, the shift a little below all levels,
+    /// with full orthogonalisation; every state is polished, and the count of levels
+    /// below the last one certifies that none was missed. `None` where it was not.
+    fn lanczos(&mut self, count: usize) -> Option<Vec<Eigenpair<T>>> {
+        let order = self.pencil.band.order;
+        let steps = (2 * count + 16).min(order);
+        self.rough(1);
+        let shift = self.bracket(1).0.0;
+        let factor = self.pencil.factor(shift);
+        if factor.below() > 0 {
+            return None;
+        }
+        let mut basis: Vec<State<T>> = Vec::with_capacity(steps);
+        let mut next = self.pencil.start(1);
+        next.unscale_mut(next.norm());
+        let (mut diagonal, mut beside) = (Vec::with_capacity(steps), Vec::with_capacity(steps));
+        for _ in 0..steps {
+            let mut image = factor.solve(&next);
+            diagonal.push(next.dotc(&image).real());
+            basis.push(next);
+            // Twice is enough.
+            for _ in 0..2 {
+                for member in &basis {
+                    let amount = member.dotc(&image);
+                    image.axpy(-amount, member, T::one());
+                }
+            }
+            let size = image.norm();
+            if !size.is_finite() {
+                return None;
+            }
+            if size <= 1e-14 * diagonal[0].abs() {
+                break;
+            }
+            beside.push(size);
+            image.unscale_mut(size);
+            next = image;
+        }
+        let size = basis.len();
+        let small = nalgebra::DMatrix::from_fn(size, size, |row, column| match row.abs_diff(column) {
+            0 => diagonal[row],
+            1 => beside[row.min(column)],
+            _ => 0.0,
+        });
+        let eigen = nalgebra::SymmetricEigen::try_new(small, f64::EPSILON, 100 * size)?;
+        let mut ranks: Vec<usize> = (0..size).collect();
+        ranks.sort_by(|&a, &b| eigen.eigenvalues[b].total_cmp(&eigen.eigenvalues[a]));
+        let mut found: Vec<Eigenpair<T>> = Vec::with_capacity(count);
+        for &rank in ranks.iter().take(count) {
+            let mut state = State::zeros(order);
+            for (member, &part) in basis.iter().zip(eigen.eigenvectors.column(rank).iter()) {
+                state.axpy(T::from_real(part), member, T::one());
+            }
+            let (energy, _, state) = self.pencil.polish(state, &[])?;
+            found.push(Eigenpair { number: found.len() + 1, energy, state });
+        }
+        if found.len() < count {
+            return None;
+        }
+        found.sort_by(|a, b| a.energy.total_cmp(&b.energy));
+        let narrow = 4.0 * f64::EPSILON * self.pencil.norm;
+        for (idx, pair) in found.iter_mut().enumerate() {
+            pair.number = idx + 1;
+        }
+        // Twice the same level, or states that polishing threw together, are no proof.
+        let apart = found.windows(2).all(|two| {
+            two[1].energy - two[0].energy > 100.0 * narrow && two[0].state.dotc(&two[1].state).norm1() < 1e-8
+        });
+        let last = found.last()?.energy;
+        let certified =
+            apart && self.count(last + 2.0 * narrow) == count && self.count(last - 2.0 * narrow) + 1 == count;
+        certified.then_some(found)
     }
 
     /// The level that a warm start leads to, with its number certified by counts
