@@ -1,5 +1,14 @@
 //! Published values and general-purpose libraries against the program, one
 //! file per source.
 
+mod box_in_field;
+mod breit_rabi;
+mod charge_box;
 mod crossing;
+mod mathieu;
+mod quartic;
+mod rotor_stark;
+mod solved;
+mod spheroidal;
+mod spin_one;
 mod stacks;
