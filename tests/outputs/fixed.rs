@@ -128,7 +128,7 @@ fn every_code_of_a_16_bit_control_gives_the_same_16_bit_value() {
     every_code(12.3, (16, 0.01), (16, 0.01), "i16");
 }
 
-/// An 8-bit control at every code, and a 32-bit control on a comb of 143,000 codes.
+/// An 8-bit control at every code, and a 32-bit control on a comb of 43,000 codes.
 #[test]
 fn narrow_and_wide_controls_give_the_same_values() {
     every_code(0.0, (8, 0.5), (32, 1e-3), "i8-i32");

@@ -92,7 +92,7 @@ impl Scratch {
 
 impl Drop for Scratch {
     fn drop(&mut self) {
-        let _ = std::fs::remove_dir_all(&self.0);
+        if std::env::var_os("KEEP").is_none() { let _ = std::fs::remove_dir_all(&self.0); }
     }
 }
 
