@@ -22,8 +22,8 @@ fn degenerate_pairs_part_at_their_order() {
         rows.iter().enumerate().map(|(idx, (name, _))| level(name, idx + 1, "", "1", 4, 1e-3)).collect();
     let found = record(&parts(
         "",
-        "z: phase",
-        "z.number^2 + 2*q*(2*z.cos^2 - 1)",
+        "p: phase",
+        "p.number^2 + 2*q*(2*p.cos^2 - 1)",
         "",
         "symbol: q, unit: 1, within: [-0.3, 0.3]",
         &formulas,
@@ -44,8 +44,8 @@ fn exact_levels_are_characteristic_values() {
     for (at, exact) in [(1.0, -0.455_138_604_107_413_5), (5.0, -5.800_046_020_851_508)] {
         let found = record(&parts(
             "",
-            "z: phase",
-            "4*z.number^2 + 2*q*z.cos",
+            "p: phase",
+            "4*p.number^2 + 2*q*p.cos",
             "",
             &format!("symbol: q, unit: 1, at: {at}, within: [{}, {}]", at - 0.5, at + 0.5),
             &level("a0", 1, "", "1", 4, 1e-2),
