@@ -92,7 +92,9 @@ impl Scratch {
 
 impl Drop for Scratch {
     fn drop(&mut self) {
-        if std::env::var_os("KEEP").is_none() { let _ = std::fs::remove_dir_all(&self.0); }
+        if std::env::var_os("KEEP").is_none() {
+            let _ = std::fs::remove_dir_all(&self.0);
+        }
     }
 }
 
