@@ -30,7 +30,7 @@ fn solved(josephson: f64) -> serde_json::Value {
 #[test]
 fn the_curvature_at_half_charge_is_that_of_the_charge_basis() {
     for (josephson, curvature, energy) in
-        [(0.1, -312.063105305290, 0.949689448964034841), (0.5, -56.3257466157535, 0.742428825986629743)]
+        [(0.1, -312.063_105_305_29, 0.949_689_448_964_034_8), (0.5, -56.325_746_615_753_5, 0.742_428_825_986_629_7)]
     {
         let found = solved(josephson);
         let e = series(&found, "single");
