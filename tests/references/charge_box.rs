@@ -29,9 +29,10 @@ fn solved(josephson: f64) -> serde_json::Value {
 /// digits). The two-level model alone gives 8 EC - 32 EC^2/EJ = -312 and -56 for the curvature.
 #[test]
 fn the_curvature_at_half_charge_is_that_of_the_charge_basis() {
-    for (josephson, curvature, energy) in
-        [(0.1, -312.063_105_305_29, 0.949_689_448_964_034_8), (0.5, -56.325_746_615_753_5, 0.742_428_825_986_629_7)]
-    {
+    for (josephson, curvature, energy) in [
+        (0.1, -312.063_105_305_29, 0.949_689_448_964_034_8),
+        (0.5, -56.325_746_615_753_5, 0.742_428_825_986_629_7),
+    ] {
         let found = solved(josephson);
         let e = series(&found, "single");
         close(2.0 * e[2], curvature, 1e-10, 0.0, "curvature");
