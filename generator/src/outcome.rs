@@ -65,6 +65,8 @@ pub struct ContributionOutcome {
     pub system: String,
     /// Level number; `None` is written `"direct"`.
     pub level: Option<usize>,
+    /// Values that select the level's block, where it is another than the formula's.
+    pub block: Vec<(String, f64)>,
     /// Energy at the operating point.
     pub energy: f64,
     /// Term over sum.
@@ -78,8 +80,20 @@ pub struct MixingOutcome {
     pub system: String,
     /// Level number.
     pub level: usize,
+    /// Values that select the level's block, where it is another than the formula's.
+    pub block: Vec<(String, f64)>,
     /// Per control unit.
     pub coefficient: f64,
+}
+
+/// A system's name with the values that select a block, `atom (m = 1)`.
+#[must_use]
+pub fn block_name(system: &str, block: &[(String, f64)]) -> String {
+    if block.is_empty() {
+        return system.to_owned();
+    }
+    let values: Vec<String> = block.iter().map(|(name, value)| format!("{name} = {value}")).collect();
+    format!("{system} ({})", values.join(", "))
 }
 
 /// Whether the formula gives the level or its change.

@@ -23,7 +23,8 @@ use crate::programs::{self, Callable, inverses};
 
 /// Steps of control and value in fixed point per demo spec; a demo spec that is
 /// not named here is tried in double and single precision.
-const STEPS: [(&str, &str, &str); 13] = [
+const STEPS: [(&str, &str, &str); 14] = [
+    ("bead", "0.01 kV/cm", "10 ueV"),
     ("shutter", "0.01 kV/cm", "1 ueV"),
     ("shutter_best", "0.01 kV/cm", "0.5 ueV"),
     ("latch", "0.01 kV/cm", "1 ueV"),
@@ -40,8 +41,7 @@ const STEPS: [(&str, &str, &str); 13] = [
 ];
 
 /// Demo specs that the program may still refuse, and with which word.
-const REFUSED: [(&str, &str); 3] =
-    [("bead", "not-built"), ("glow", "not-built"), ("needle", "range-not-covered")];
+const REFUSED: [(&str, &str); 2] = [("glow", "not-built"), ("needle", "range-not-covered")];
 
 /// The spec with all number formats as outputs in place of its own.
 fn in_every_format(name: &str, spec: &str) -> String {

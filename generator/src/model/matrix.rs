@@ -49,7 +49,17 @@ pub fn build(system: &System, matrix: &Matrix, request: &Request<'_>) -> Result<
     } else {
         AnyModel::Complex(Rc::new(Polynomial::new(symmetric, request.at)))
     };
-    Ok(Built { model, unit: matrix.unit.clone(), refinable: false, size: order, notes: Vec::new() })
+    Ok(Built {
+        model,
+        unit: matrix.unit.clone(),
+        refinable: false,
+        size: order,
+        notes: Vec::new(),
+        numbers: Vec::new(),
+        levels: Vec::new(),
+        labelled: false,
+        formal: false,
+    })
 }
 
 /// A polynomial of the control with matrix coefficients.

@@ -14,6 +14,7 @@
 pub mod layers;
 pub mod matrix;
 pub mod parts;
+pub mod radial;
 
 use std::rc::Rc;
 
@@ -93,6 +94,12 @@ pub trait Model<T: Scalar> {
     /// scale that the spec language names for this kind.
     fn degeneracy_scale(&self) -> f64;
 
+    /// The angular momentum l of a state of shells at the operating point, where it has
+    /// one; `None` for every other kind.
+    fn channel(&self, _state: &State<T>) -> Option<usize> {
+        None
+    }
+
     /// The envelope at a position (layers: z in nm from the origin; normalised
     /// so that its square integrates to 1), for overlaps and pictures. `None`
     /// where there is no position.
@@ -131,6 +138,28 @@ pub struct Built {
     pub size: usize,
     /// Remarks for the record, for example that a bound holds for the truncated basis.
     pub notes: Vec<crate::outcome::Note>,
+    /// The number in the model of each level of the block, where the model holds more than
+    /// the block; else empty.
+    pub numbers: Vec<usize>,
+    /// The first levels of the block, where the model holds more; else empty.
+    pub levels: Vec<f64>,
+    /// True if levels are counted by l, so that every state is named by its own l.
+    pub labelled: bool,
+    /// True if the level is bound at the operating point alone, so that the series is all
+    /// that there is.
+    pub formal: bool,
+}
+
+impl Built {
+    /// The number in the model of a level of the block; 0 for one that it does not
+    /// hold, which no model has.
+    #[must_use]
+    pub fn number(&self, level: usize) -> usize {
+        if self.numbers.is_empty() {
+            return level;
+        }
+        level.checked_sub(1).and_then(|idx| self.numbers.get(idx)).copied().unwrap_or(0)
+    }
 }
 
 /// What a model is built for.
@@ -160,13 +189,6 @@ pub fn build(system: &crate::spec::System, request: &Request<'_>) -> crate::diag
         Kind::Layers(layers) => layers::build(system, layers, request),
         Kind::Matrix(matrix) => matrix::build(system, matrix, request),
         Kind::Parts(parts) => parts::build(system, parts, request),
-        Kind::Radial(_) => Err(crate::diagnostic::Error::spec(
-            crate::diagnostic::Diagnostic::new(
-                "not-built",
-                "systems of kind `radial` are read but not yet solved",
-            )
-            .at(Some(system.place.clone()))
-            .action("use `layers`, `parts` or `matrix`; this version has no solver for shells"),
-        )),
+        Kind::Radial(shells) => radial::build(system, shells, request),
     }
 }

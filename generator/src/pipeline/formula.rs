@@ -5,12 +5,27 @@ use super::settle::SAFETY;
 use super::sum::Sum;
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::form::{self, Form};
-use crate::model::AnyModel;
+use crate::model::{AnyModel, Built};
 use crate::outcome::{FormulaOutcome, Note, Valid, ValueKind};
 use crate::pencil;
-use crate::range::{Candidate, Followed, Limit, Ranged};
+use crate::range::{Candidate, Followed, Formal, Limit, Ranged};
 use crate::series;
 use crate::spec::{CoefficientChoice, FormChoice, Formula, Spec};
+
+/// What a form is held against.
+pub(super) enum Exact<'a> {
+    /// The exact quantity, followed.
+    Followed(Followed<'a>),
+    /// The series itself, where no exact level exists.
+    Formal {
+        /// Operating point.
+        at: f64,
+        /// Wanted interval.
+        within: (f64, f64),
+        /// Powers and coefficients of the next two orders.
+        next: Vec<(usize, f64)>,
+    },
+}
 
 /// A form before and after its digits are cut.
 struct Proposed {
@@ -33,9 +48,9 @@ impl Numerical {
         let (at, (from, to)) = (spec.control.at, spec.control.within);
         let shift = formula.value == ValueKind::Shift;
         let mut ends = [0.0; 2];
-        if sum.overlap {
-            // Both envelopes change with the field by the series, so its own
-            // uncertainties tell how well they are known further out.
+        if sum.overlap || sum.is_formal() {
+            // Envelopes change with the field by the series, and an unbound level is
+            // its series, so its uncertainties tell how well they are known further out.
             for (end, control) in ends.iter_mut().zip([from, to]) {
                 let d = (control - at).abs();
                 *end = sum.uncertainty.iter().rev().fold(0.0, |total, u| total * d + u);
@@ -45,15 +60,16 @@ impl Numerical {
         }
         for (end, control) in ends.iter_mut().zip([from, to]) {
             for term in &sum.levels {
-                let number = term.settled.level.number();
-                let fine = energy(&term.settled.built.model, control, number)?;
+                let number = |built: &Built| built.number(term.reference.level);
+                let fine = energy(&term.settled.built.model, control, number(&term.settled.built))?;
                 let rounding = f64::EPSILON * fine.abs();
                 let change = match &term.settled.coarse {
                     None => 0.0,
                     Some(coarse) => {
-                        let there = energy(&coarse.model, control, number)?;
+                        // A coarser basis may number its levels otherwise.
+                        let there = energy(&coarse.model, control, number(coarse))?;
                         let here = if shift {
-                            term.settled.level.energies()[0] - energy(&coarse.model, at, number)?
+                            term.settled.level.energies()[0] - energy(&coarse.model, at, number(coarse))?
                         } else {
                             0.0
                         };
@@ -103,12 +119,12 @@ impl Measured {
         &self,
         spec: &Spec,
         formula: &Formula,
-        followed: &Followed<'_>,
+        exact: &Exact<'_>,
         numerical: &Numerical,
         rounding: f64,
     ) -> Result<Valid> {
         let proposed = Proposed { full: self.full.clone(), written: self.outcome.form.clone() };
-        Ok(valid(spec, &measure(formula, followed, numerical, &proposed, rounding)?))
+        Ok(valid(spec, &measure(formula, exact, numerical, &proposed, rounding)?))
     }
 }
 
@@ -125,19 +141,24 @@ fn valid(spec: &Spec, ranged: &Ranged) -> Valid {
 
 fn measure(
     formula: &Formula,
-    followed: &Followed<'_>,
+    exact: &Exact<'_>,
     numerical: &Numerical,
     proposed: &Proposed,
     rounding: f64,
 ) -> Result<Ranged> {
-    followed
-        .measure(&Candidate {
-            form: &proposed.written,
-            numerical: &|d| numerical.at(d),
-            written: &|d| proposed.written.written_error(&proposed.full, d),
-            rounding,
-        })
-        .map_err(|error| place(error, formula))
+    let candidate = Candidate {
+        form: &proposed.written,
+        numerical: &|d| numerical.at(d),
+        written: &|d| proposed.written.written_error(&proposed.full, d),
+        rounding,
+    };
+    match exact {
+        Exact::Followed(followed) => followed.measure(&candidate),
+        Exact::Formal { at, within, next } => {
+            Formal { at: *at, within: *within, next, tolerance: formula.tolerance }.measure(&candidate)
+        }
+    }
+    .map_err(|error| place(error, formula))
 }
 
 /// Points an error that has no place at the formula's tolerance.
@@ -162,21 +183,24 @@ pub(super) fn outcome(
     spec: &Spec,
     formula: &Formula,
     sum: &Sum,
-    followed: &Followed<'_>,
+    exact: &Exact<'_>,
     numerical: &Numerical,
 ) -> Result<Measured> {
     let mut notes = sum.notes();
     let polynomial = || -> Result<(Proposed, Ranged)> {
         let proposed = match formula.coefficients {
             CoefficientChoice::Series => series_form(formula, sum),
-            CoefficientChoice::Minimax => minimax(spec, formula, sum, followed, numerical)?,
+            CoefficientChoice::Minimax => minimax(spec, formula, sum, exact, numerical)?,
         };
-        let ranged = measure(formula, followed, numerical, &proposed, 0.0)?;
+        let ranged = measure(formula, exact, numerical, &proposed, 0.0)?;
         Ok((proposed, ranged))
     };
     let paired = || -> Result<(Proposed, Ranged)> {
+        if matches!(exact, Exact::Formal { .. }) {
+            return Err(no_exact_level(formula, "a pair form", "`form: polynomial`"));
+        }
         let proposed = pair_form(formula, sum)?;
-        let ranged = measure(formula, followed, numerical, &proposed, 0.0)?;
+        let ranged = measure(formula, exact, numerical, &proposed, 0.0)?;
         Ok((proposed, ranged))
     };
     let length = |ranged: &Ranged| ranged.valid.1 - ranged.valid.0;
@@ -199,7 +223,7 @@ pub(super) fn outcome(
                 }
             }
             if formula.coefficients == CoefficientChoice::Minimax {
-                let series = measure(formula, followed, numerical, &series_form(formula, sum), 0.0);
+                let series = measure(formula, exact, numerical, &series_form(formula, sum), 0.0);
                 notes.push(Note {
                     code: "minimax".into(),
                     text: match series {
@@ -264,6 +288,16 @@ pub(super) fn outcome(
     })
 }
 
+/// What cannot be had where the field leaves no level bound.
+fn no_exact_level(formula: &Formula, what: &str, instead: &str) -> Error {
+    Error::spec(
+        Diagnostic::new("no-exact-level", format!("{what} of `{}` needs an exact level", formula.name))
+            .at(Some(formula.place.clone()))
+            .found("open ends in a field, behind which no level is bound")
+            .action(format!("use {instead}, or `ends: wall`")),
+    )
+}
+
 /// A number for a sentence.
 fn brief(x: f64) -> String {
     let text = format!("{x:.4e}");
@@ -284,9 +318,12 @@ fn minimax(
     spec: &Spec,
     formula: &Formula,
     sum: &Sum,
-    followed: &Followed<'_>,
+    exact: &Exact<'_>,
     numerical: &Numerical,
 ) -> Result<Proposed> {
+    let Exact::Followed(followed) = exact else {
+        return Err(no_exact_level(formula, "a best polynomial", "`coefficients: series`"));
+    };
     let at = spec.control.at;
     let within = (spec.control.within.0 - at, spec.control.within.1 - at);
     let mut absent: Vec<usize> = Vec::new();
@@ -344,7 +381,7 @@ fn pair_form(formula: &Formula, sum: &Sum) -> Result<Proposed> {
     remove(first);
     for term in sum.levels.iter().skip(1) {
         let same = term.system == first.system && term.reference.block == first.reference.block;
-        if same && term.reference.level == partner {
+        if same && term.settled.built.number(term.reference.level) == partner {
             weight[1] += term.times();
             remove(term);
         } else if same && term.reference.level == first.reference.level {

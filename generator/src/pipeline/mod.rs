@@ -103,14 +103,19 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
             let base = if formula.value == ValueKind::Shift { 0.0 } else { sum.series[0] };
             let (within, tolerance) = (spec.control.within, formula.tolerance);
             followed.push(match sum.levels.as_slice() {
-                [one, other] if sum.overlap => range::follow_overlap(&range::OverlapRequest {
-                    at,
-                    within,
-                    systems: [&one.system, &other.system],
-                    levels: [&one.settled.level, &other.settled.level],
-                    base,
-                    tolerance,
-                })?,
+                _ if sum.is_formal() => {
+                    formula::Exact::Formal { at, within, next: sum.next_orders(formula.order, at)? }
+                }
+                [one, other] if sum.overlap => {
+                    formula::Exact::Followed(range::follow_overlap(&range::OverlapRequest {
+                        at,
+                        within,
+                        systems: [&one.system, &other.system],
+                        levels: [&one.settled.level, &other.settled.level],
+                        base,
+                        tolerance,
+                    })?)
+                }
                 levels => {
                     let terms = levels
                         .iter()
@@ -120,7 +125,14 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
                             level: &term.settled.level,
                         })
                         .collect();
-                    range::follow(&range::Request { at, within, terms, known_change, base, tolerance })?
+                    formula::Exact::Followed(range::follow(&range::Request {
+                        at,
+                        within,
+                        terms,
+                        known_change,
+                        base,
+                        tolerance,
+                    })?)
                 }
             });
         }

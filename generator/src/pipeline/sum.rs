@@ -8,7 +8,7 @@ use std::rc::Rc;
 use super::settle::{SAFETY, Settled};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::expr::Tree;
-use crate::outcome::{ContributionOutcome, MixingOutcome, Note};
+use crate::outcome::{ContributionOutcome, MixingOutcome, Note, block_name};
 use crate::series;
 use crate::spec::{self, LevelRef};
 use crate::units::{Unit, energy_factor};
@@ -33,6 +33,18 @@ impl LevelTerm {
     #[must_use]
     pub fn times(&self) -> f64 {
         self.weight * self.conversion
+    }
+
+    /// The block and number of a state of shells, where levels are counted by l. The
+    /// block is empty if it is the level's own.
+    fn named(&self, channel: Option<(usize, usize)>) -> Option<(Vec<(String, f64)>, usize)> {
+        let (l, number) = channel.filter(|_| self.settled.built.labelled)?;
+        let mut block = self.reference.block.clone();
+        block.iter_mut().filter(|(name, _)| name == "l").for_each(|(_, value)| *value = l as f64);
+        if block == self.reference.block {
+            block.clear();
+        }
+        Some((block, number))
     }
 }
 
@@ -161,6 +173,48 @@ impl Sum {
         Ok(Self { levels: levels.into(), known: Vec::new(), series, uncertainty, zero, overlap: true })
     }
 
+    /// True if one of its levels has no exact value away from the operating point.
+    #[must_use]
+    pub fn is_formal(&self) -> bool {
+        self.levels.iter().any(|term| term.settled.built.formal)
+    }
+
+    /// The next two orders beyond `order` that are not zero, with their powers, by which a
+    /// series without an exact level judges itself.
+    ///
+    /// # Errors
+    /// Those of the solves.
+    pub fn next_orders(&self, order: usize, at: f64) -> Result<Vec<(usize, f64)>> {
+        let mut series: Vec<f64> = Vec::new();
+        for term in &self.levels {
+            let own = series::continued(&term.settled.level)?;
+            if series.is_empty() {
+                series = vec![0.0; own.len()];
+            }
+            series.truncate(own.len());
+            for (sum, energy) in series.iter_mut().zip(own) {
+                *sum += term.times() * energy;
+            }
+        }
+        for (weight, tree) in &self.known {
+            for (sum, coefficient) in series.iter_mut().zip(tree.taylor(at, 0.0)) {
+                *sum += weight * coefficient;
+            }
+        }
+        // What a symmetry makes zero in third order, it makes zero in every odd one.
+        let absent = |power: usize| match self.zero.get(power) {
+            Some(zero) => zero.is_some(),
+            None => power % 2 == 1 && self.zero[3].is_some(),
+        };
+        Ok(series
+            .into_iter()
+            .enumerate()
+            .skip(order + 1)
+            .filter(|&(power, coefficient)| coefficient != 0.0 && !absent(power))
+            .take(2)
+            .collect())
+    }
+
     /// The known terms' change from the operating point.
     pub fn known_change(&self, at: f64, control: f64) -> f64 {
         self.known.iter().map(|(weight, tree)| weight * tree.change(at, control, 0.0)).sum()
@@ -181,7 +235,8 @@ impl Sum {
             .flat_map(|term| {
                 term.settled.level.contributions().iter().map(|one| ContributionOutcome {
                     system: term.system.clone(),
-                    level: one.level,
+                    level: term.named(one.channel).map_or(one.level, |named| Some(named.1)),
+                    block: term.named(one.channel).map_or_else(Vec::new, |named| named.0),
                     energy: term.conversion * one.energy,
                     share: one.share,
                 })
@@ -197,7 +252,8 @@ impl Sum {
             .flat_map(|term| {
                 term.settled.level.mixing().iter().map(|one| MixingOutcome {
                     system: term.system.clone(),
-                    level: one.level,
+                    level: term.named(one.channel).map_or(one.level, |named| named.1),
+                    block: term.named(one.channel).map_or_else(Vec::new, |named| named.0),
                     coefficient: one.coefficient,
                 })
             })
@@ -217,7 +273,8 @@ impl Sum {
             // The first block of a system carries the system's plain name, by
             // which readers look; further blocks say which they are.
             let first = self.levels.iter().find(|other| other.system == term.system).is_some_and(same_block);
-            let name = if first { term.system.clone() } else { block_name(&term.system, &term.reference) };
+            let name =
+                if first { term.system.clone() } else { block_name(&term.system, &term.reference.block) };
             if out.iter().all(|(other, _)| *other != name) {
                 out.push((name, levels));
             }
@@ -266,11 +323,4 @@ impl Sum {
         }
         out
     }
-}
-
-/// A system's name with the values that select its block, `atom (m = 1)`.
-fn block_name(system: &str, reference: &LevelRef) -> String {
-    let values: Vec<String> =
-        reference.block.iter().map(|(name, value)| format!("{name} = {value}")).collect();
-    format!("{system} ({})", values.join(", "))
 }

@@ -30,12 +30,24 @@ pub(crate) fn outcome() -> Outcome {
             ContributionOutcome {
                 system: "electron".to_owned(),
                 level: Some(2),
+                block: Vec::new(),
                 energy: 135.91,
                 share: 0.9993,
             },
-            ContributionOutcome { system: "electron".to_owned(), level: None, energy: 34.934, share: 0.0007 },
+            ContributionOutcome {
+                system: "electron".to_owned(),
+                level: None,
+                block: Vec::new(),
+                energy: 34.934,
+                share: 0.0007,
+            },
         ],
-        mixing: vec![MixingOutcome { system: "electron".to_owned(), level: 2, coefficient: 0.002_32 }],
+        mixing: vec![MixingOutcome {
+            system: "electron".to_owned(),
+            level: 2,
+            block: Vec::new(),
+            coefficient: 0.002_32,
+        }],
         levels: vec![("electron".to_owned(), vec![34.934, 135.91])],
         sizes: vec![("electron".to_owned(), 47)],
         samples: (-4..=4)

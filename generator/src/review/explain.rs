@@ -9,7 +9,7 @@
 use serde::Serialize;
 
 use crate::form::Form;
-use crate::outcome::{FormulaOutcome, Outcome, ValueKind};
+use crate::outcome::{FormulaOutcome, Outcome, ValueKind, block_name};
 
 use super::numbers::{coefficient_unit, coefficients, polynomial_name, reason, short, with_unit};
 use super::plot;
@@ -141,12 +141,12 @@ fn explanation(outcome: &Outcome, formula: &FormulaOutcome) -> Explanation {
                 share: formula
                     .contributions
                     .iter()
-                    .find(|c| c.system == *system && c.level == Some(level))
+                    .find(|c| c.block.is_empty() && c.system == *system && c.level == Some(level))
                     .map(|c| c.share),
                 mixing: formula
                     .mixing
                     .iter()
-                    .find(|m| m.system == *system && m.level == level)
+                    .find(|m| m.block.is_empty() && m.system == *system && m.level == level)
                     .map(|m| m.coefficient),
             });
         }
@@ -166,19 +166,19 @@ fn explanation(outcome: &Outcome, formula: &FormulaOutcome) -> Explanation {
     };
     let next_orders_reach =
         [reach(control.within.0).map(|d| control.at + d), reach(control.within.1).map(|d| control.at + d)];
-    // States beyond the listed twelve that still count.
+    // States beyond the listed twelve, and of other blocks, that still count.
     for part in &formula.contributions {
-        let listed = |line: &LevelLine| line.system == part.system && Some(line.level) == part.level;
+        let system = block_name(&part.system, &part.block);
+        let listed = |line: &LevelLine| line.system == system && Some(line.level) == part.level;
         if let Some(level) = part.level
             && !levels.iter().any(listed)
         {
-            levels.push(LevelLine {
-                system: part.system.clone(),
-                level,
-                energy: part.energy,
-                share: Some(part.share),
-                mixing: None,
-            });
+            let mixing = formula
+                .mixing
+                .iter()
+                .find(|m| m.system == part.system && m.block == part.block && m.level == level)
+                .map(|m| m.coefficient);
+            levels.push(LevelLine { system, level, energy: part.energy, share: Some(part.share), mixing });
         }
     }
     Explanation {
@@ -356,11 +356,12 @@ fn formula_text(
     if !it.levels.is_empty() {
         let per_control = coefficient_unit("1", &control.unit, 1);
         say(format!("  levels in {}, share of b, first-order mixing in {per_control}", it.unit));
+        let wide = it.levels.iter().map(|level| level.system.len()).fold(14, usize::max);
         for level in &it.levels {
             let share = level.share.map_or(String::new(), |s| format!("{} %", short(100.0 * s, 4)));
             let mixing = level.mixing.map_or(String::new(), |m| short(m, 4));
             say(format!(
-                "    {:<14} {:>3}  {:>14}  {share:>10}  {mixing:>11}",
+                "    {:<wide$} {:>3}  {:>14}  {share:>10}  {mixing:>11}",
                 level.system,
                 level.level,
                 short(level.energy, 8)

@@ -43,10 +43,19 @@ pub(super) const SAFETY: f64 = 4.0;
 /// `no-such-level` (spec) beyond the number of states; `near-degenerate`
 /// (accuracy) if a neighbour is too close to decide whether it is degenerate.
 pub fn solve(built: &Built, number: usize) -> Result<AnyLevel> {
+    let own = built.number(number);
     Ok(match &built.model {
-        AnyModel::Real(model) => AnyLevel::Real(Box::new(level(model, number)?)),
-        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(level(model, number)?)),
+        AnyModel::Real(model) => AnyLevel::Real(Box::new(within(built, level(model, own)?))),
+        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(within(built, level(model, own)?))),
     })
+}
+
+/// A level with the list of its own block, where its model holds more.
+fn within<T: Scalar>(built: &Built, mut level: Level<T>) -> Level<T> {
+    if !built.levels.is_empty() {
+        level.levels.clone_from(&built.levels);
+    }
+    level
 }
 
 /// [`solve`] for a model of known field.

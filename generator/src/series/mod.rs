@@ -11,6 +11,7 @@
 //!
 //! Not here: files, languages, ranges.
 
+mod continued;
 mod effective;
 mod level;
 mod overlap;
@@ -25,6 +26,7 @@ mod trial;
 
 use std::rc::Rc;
 
+pub use continued::continued;
 pub use level::{level, solve};
 pub use overlap::{OverlapSeries, overlap, points, squared_overlap, wave};
 pub use pair::{pair, pair_of};
@@ -43,6 +45,8 @@ pub struct Contribution {
     pub energy: f64,
     /// Its share of the whole sum.
     pub share: f64,
+    /// Its l and its number among the levels of that l, for shells where each has one.
+    pub channel: Option<(usize, usize)>,
 }
 
 /// First-order amplitude of another level per control unit.
@@ -54,6 +58,8 @@ pub struct Mixing {
     pub energy: f64,
     /// The amplitude, signed where the model defines the sign of a state, else its modulus.
     pub coefficient: f64,
+    /// Its l and its number among the levels of that l, for shells where each has one.
+    pub channel: Option<(usize, usize)>,
 }
 
 /// The series of one level at one refinement.

@@ -82,9 +82,16 @@ pub(super) fn share<T: Scalar>(
         }
         let disagreement = if second > sum { second - sum } else { (sum + tail - second).max(0.0) };
         let largest_term = terms.iter().fold(direct.abs(), |size, term| size.max(term.2.abs()));
-        let contributions =
+        let mut contributions =
             if second == 0.0 { Vec::new() } else { listed(&terms, direct, second, set.energy) };
-        let mixing = mixing(model, set, &terms, states, &contributions);
+        let mut mixing = mixing(model, set, &terms, states, &contributions);
+        let channels: Vec<Option<usize>> = states.iter().map(|pair| model.channel(&pair.state)).collect();
+        let named = |number: usize| {
+            let own = channels.get(number.checked_sub(1)?).copied().flatten()?;
+            Some((own, channels[..number].iter().filter(|&&other| other == Some(own)).count()))
+        };
+        contributions.iter_mut().for_each(|one| one.channel = one.level.and_then(named));
+        mixing.iter_mut().for_each(|one| one.channel = named(one.level));
         let levels = set
             .lowest
             .iter()
@@ -104,10 +111,15 @@ fn listed<T: Scalar>(
 ) -> Vec<Contribution> {
     let mut all: Vec<Contribution> = terms
         .iter()
-        .map(|&(number, energy, term, _)| Contribution { level: Some(number), energy, share: term / second })
+        .map(|&(number, energy, term, _)| Contribution {
+            level: Some(number),
+            energy,
+            share: term / second,
+            channel: None,
+        })
         .collect();
     if direct != 0.0 {
-        all.push(Contribution { level: None, energy: own, share: direct / second });
+        all.push(Contribution { level: None, energy: own, share: direct / second, channel: None });
     }
     all.retain(|one| one.share != 0.0);
     all.sort_by(|a, b| b.share.abs().total_cmp(&a.share.abs()).then(a.level.cmp(&b.level)));
@@ -144,7 +156,7 @@ fn mixing<T: Scalar>(
                 Some(phase) => (phase.conjugate() * amount).real(),
                 None => amount.modulus(),
             };
-            Some(Mixing { level: number, energy, coefficient })
+            Some(Mixing { level: number, energy, coefficient, channel: None })
         })
         .collect();
     out.sort_by(|a, b| b.coefficient.abs().total_cmp(&a.coefficient.abs()).then(a.level.cmp(&b.level)));

@@ -88,6 +88,50 @@ def spin(j):
     return (up + up.T) / 2, (up - up.T) / 2j, np.diag(m)
 
 
+def ball(shells, charge, channels=9, degree=18):
+    """Matrices of concentric shells at m = 0, eV and nm: without field, and per
+    V/nm of field along z. shells: (thickness, edge, mass), a wall outside.
+
+    The unknown is the radial function itself, not its product with the radius,
+    in polynomials between Lobatto points with Gauss quadrature, so the overlap
+    is a full matrix. Regular at the centre; for l > 0 it vanishes there.
+    """
+    x, _, _ = lobatto(degree)
+    g, w = np.polynomial.legendre.leggauss(degree + 6)
+    # Cardinal functions and slopes at the Gauss points by Vandermonde matrices.
+    v = np.polynomial.legendre.legvander(x, degree)
+    values = np.linalg.solve(v.T, np.polynomial.legendre.legvander(g, degree).T).T
+    slope = np.polynomial.legendre.legder(np.eye(degree + 1))
+    slopes = np.linalg.solve(v.T, (np.polynomial.legendre.legvander(g, degree - 1) @ slope).T).T
+    size = degree * len(shells) + 1
+    h = np.zeros((channels, size, size))
+    s, f = np.zeros((size, size)), np.zeros((size, size))
+    start = 0.0
+    for i, (t, edge, mass) in enumerate(shells):
+        at = np.ix_(range(i * degree, (i + 1) * degree + 1), range(i * degree, (i + 1) * degree + 1))
+        r, wr = start + t * (g + 1) / 2, w * t / 2
+        d = slopes * 2 / t
+        s[at] += (values.T * (wr * r**2)) @ values
+        f[at] += (values.T * (wr * r**3)) @ values
+        for l in range(channels):
+            h[l][at] += KINETIC / mass * (d.T * (wr * r**2)) @ d
+            h[l][at] += (values.T * (wr * (KINETIC / mass * l * (l + 1) + edge * r**2))) @ values
+        start += t
+    keep = [range(0 if l == 0 else 1, size - 1) for l in range(channels)]
+    root = [np.linalg.inv(np.linalg.cholesky(s[np.ix_(k, k)])) for k in keep]
+    ends = np.concatenate([[0], np.cumsum([len(k) for k in keep])])
+    h0, h1 = np.zeros((ends[-1],) * 2), np.zeros((ends[-1],) * 2)
+    for l in range(channels):
+        a = slice(ends[l], ends[l + 1])
+        h0[a, a] = root[l] @ h[l][np.ix_(keep[l], keep[l])] @ root[l].T
+        if l + 1 < channels:
+            b = slice(ends[l + 1], ends[l + 2])
+            cosine = (l + 1) / np.sqrt((2 * l + 1) * (2 * l + 3))
+            h1[a, b] = -charge * cosine * root[l] @ f[np.ix_(keep[l], keep[l + 1])] @ root[l + 1].T
+            h1[b, a] = h1[a, b].T
+    return h0, h1
+
+
 KV_CM = 1e-4  # V/nm
 
 
@@ -97,6 +141,11 @@ def flat(t, edge, mass):
 
 def shutter(x):
     h0, h1 = stack([flat(12, 0.232, 0.0919), flat(9, 0, 0.0665), flat(12, 0.232, 0.0919)], -1)
+    return levels(h0, KV_CM * h1, x, [0])[:, 0] * 1e3
+
+
+def bead(x):
+    h0, h1 = ball([(3, 0, 0.11), (2, 0.6, 0.16)], -1)
     return levels(h0, KV_CM * h1, x, [0])[:, 0] * 1e3
 
 
@@ -194,6 +243,7 @@ def dial(x):
 
 TERA = E / H / 1e12
 KNOWN = {
+    "bead": {"ground": bead},
     "shutter": {"edge": shutter},
     "shutter_best": {"edge": shutter},
     "latch": {

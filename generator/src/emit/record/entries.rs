@@ -129,6 +129,8 @@ pub struct FirstToFail {
 pub struct Contribution {
     pub system: String,
     pub level: LevelNumber,
+    #[serde(rename = "where", default, skip_serializing_if = "Ordered::is_empty")]
+    pub block: Ordered<f64>,
     pub energy: f64,
     pub share: f64,
 }
@@ -137,6 +139,8 @@ pub struct Contribution {
 pub struct Mixing {
     pub system: String,
     pub level: usize,
+    #[serde(rename = "where", default, skip_serializing_if = "Ordered::is_empty")]
+    pub block: Ordered<f64>,
     pub coefficient: f64,
 }
 
@@ -187,6 +191,12 @@ pub struct OutputEntryFormula {
 
 /// A JSON object whose keys are names of the spec, in the order of the file.
 pub struct Ordered<T>(pub Vec<(String, T)>);
+
+impl<T> Ordered<T> {
+    fn is_empty(&self) -> bool {
+        self.0.is_empty()
+    }
+}
 
 impl<T> Default for Ordered<T> {
     fn default() -> Self {

@@ -209,6 +209,7 @@ fn from_formula(formula: &FormulaOutcome) -> Formula {
             .map(|c| Contribution {
                 system: c.system.clone(),
                 level: LevelNumber(c.level),
+                block: Ordered(c.block.clone()),
                 energy: c.energy,
                 share: c.share,
             })
@@ -216,7 +217,12 @@ fn from_formula(formula: &FormulaOutcome) -> Formula {
         mixing: formula
             .mixing
             .iter()
-            .map(|m| Mixing { system: m.system.clone(), level: m.level, coefficient: m.coefficient })
+            .map(|m| Mixing {
+                system: m.system.clone(),
+                level: m.level,
+                block: Ordered(m.block.clone()),
+                coefficient: m.coefficient,
+            })
             .collect(),
         levels: Ordered(formula.levels.clone()),
         sizes: Ordered(formula.sizes.clone()),
@@ -329,6 +335,7 @@ fn to_formula(name: String, formula: Formula) -> FormulaOutcome {
             .map(|c| ContributionOutcome {
                 system: c.system,
                 level: c.level.0,
+                block: c.block.0,
                 energy: c.energy,
                 share: c.share,
             })
@@ -336,7 +343,12 @@ fn to_formula(name: String, formula: Formula) -> FormulaOutcome {
         mixing: formula
             .mixing
             .into_iter()
-            .map(|m| MixingOutcome { system: m.system, level: m.level, coefficient: m.coefficient })
+            .map(|m| MixingOutcome {
+                system: m.system,
+                level: m.level,
+                block: m.block.0,
+                coefficient: m.coefficient,
+            })
             .collect(),
         levels: formula.levels.0,
         sizes: formula.sizes.0,

@@ -11,8 +11,8 @@
 //! Source of the method: the effective-mass equation with the flux-conserving
 //! order of operators (BenDaniel and Duke, Phys. Rev. 152, 683 (1966), from memory).
 
-mod element;
-mod mesh;
+pub(super) mod element;
+pub(super) mod mesh;
 mod mirror;
 
 use std::rc::Rc;
@@ -99,6 +99,10 @@ pub fn build(system: &System, layers: &Layers, request: &Request<'_>) -> Result<
         refinable: true,
         size,
         notes: Vec::new(),
+        numbers: Vec::new(),
+        levels: Vec::new(),
+        labelled: false,
+        formal: false,
     })
 }
 

@@ -447,7 +447,17 @@ impl<'a> Problem<'a> {
                 ),
             });
         }
-        Ok(Built { model, unit: self.parts.unit.clone(), refinable, size: order, notes })
+        Ok(Built {
+            model,
+            unit: self.parts.unit.clone(),
+            refinable,
+            size: order,
+            notes,
+            numbers: Vec::new(),
+            levels: Vec::new(),
+            labelled: false,
+            formal: false,
+        })
     }
 }
 

@@ -14,7 +14,7 @@ use serde::Serialize;
 
 use crate::diagnostic::{Error, Result};
 use crate::form::Form;
-use crate::outcome::{FormulaOutcome, Outcome, Picture};
+use crate::outcome::{FormulaOutcome, Outcome, Picture, block_name};
 
 use super::compare::compare;
 use super::explain::{Explanation, explain};
@@ -262,7 +262,7 @@ fn contribution_figure(formula: &FormulaOutcome) -> String {
         .iter()
         .map(|part| Bar {
             label: match part.level {
-                Some(level) => format!("{} level {level}", part.system),
+                Some(level) => format!("{} level {level}", block_name(&part.system, &part.block)),
                 None => format!("{} direct", part.system),
             },
             length: part.share / largest,

@@ -1,0 +1,344 @@
+//! A carrier in concentric shells: three dimensions, effective mass.
+//!
+//! In: the shells and a block. Out: a [`Built`] whose basis is radial elements times
+//! spherical harmonics of one m: a channel per l. Without the field the channels
+//! are apart; the field's potential, `-charge e field r cos(theta)`, couples l to l + 1
+//! by
+//!
+//! ```text
+//! <l + 1, m| cos(theta) |l, m> = sqrt(((l + 1)^2 - m^2) / ((2 l + 1)(2 l + 3)))
+//! ```
+//!
+//! and is diagonal along the radius. Elements and channels are refined together.
+//!
+//! With open ends the field leaves no bound level; then the series alone is meant,
+//! and [`Built::formal`] says so.
+//!
+//! Source: Bethe and Salpeter, *Quantum Mechanics of One- and Two-Electron Atoms*,
+//! section 51 and appendix (matrix elements of cos theta), from memory.
+
+mod block;
+mod channel;
+mod mesh;
+mod shells;
+
+use std::rc::Rc;
+
+use block::Block;
+use channel::Channels;
+use mesh::{Mesh, Scale};
+use shells::Shells;
+
+use super::{AnyModel, Built, Request};
+use crate::diagnostic::{Diagnostic, Error, Result};
+use crate::pencil;
+use crate::spec::{Ends, Layer, Profile, Radial, System};
+use crate::units::Unit;
+use crate::units::constants::{coulomb_ev_nm, kinetic_ev_nm2};
+
+/// Degree of an element at refinement 0; each refinement adds two. As for layers.
+const DEGREE: usize = 14;
+
+/// Degree at refinement 0 behind open ends in a field, where corrections of every order
+/// bring one or two more powers of the radius.
+const OPEN_DEGREE: usize = 20;
+
+/// Most entries of the band of one problem.
+const MOST_ENTRIES: usize = 60_000_000;
+
+/// Most channels beyond those that hold a level.
+const MOST_CHANNELS: usize = 100;
+
+/// A level of another l this near, in parts of its height above the lowest edge, makes l
+/// no good quantum number.
+const TOGETHER: f64 = 1e-9;
+
+/// Levels of a block that are numbered at least.
+const LISTED: usize = 12;
+
+/// The radial problem without a field.
+struct Sphere {
+    mesh: Mesh,
+    channels: Channels,
+    potential: shells::Potential,
+}
+
+/// Builds the model of concentric shells.
+///
+/// # Errors
+/// A block or level that the system does not have, a level that is not bound, l asked for
+/// where it is not good, a potential or mass that is not finite, or a problem too large.
+pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<Built> {
+    let block = Block::read(system, radial, request)?;
+    let coupled = radial
+        .field
+        .as_ref()
+        .is_some_and(|field| field.uses_control() || field.value(request.at, 0.0) != 0.0)
+        && radial.charge != 0.0;
+    let open = radial.ends == Ends::Decay;
+    let formal = open && coupled;
+    let at_field = field_at(radial, request.at);
+    if formal && at_field != 0.0 {
+        return Err(not_bound(
+            system,
+            request.level,
+            "none, since the field pulls every level out",
+            "move `at` to where the field is zero, or use `ends: wall`",
+        ));
+    }
+    let (sphere, energy) = settled_sphere(system, radial, request, block, formal)?;
+    let lowest_edge = sphere.potential.lowest_edge(request.at);
+    let height = (energy - lowest_edge).abs();
+    let apart = TOGETHER * height;
+
+    let mut numbers = Vec::new();
+    let mut own_levels = Vec::new();
+    let channels: Vec<usize> = match block.l {
+        Some(l) if !coupled => vec![l],
+        _ => {
+            let from = block.m;
+            let reach = [request.reach.0, request.at, request.reach.1]
+                .map(|control| (radial.charge * field_at(radial, control)).abs())
+                .into_iter()
+                .filter(|x| x.is_finite())
+                .fold(0.0, f64::max);
+            let margin = if formal || !coupled { 0.0 } else { 2.0 * reach * sphere.mesh.radius() };
+            let top = sphere.channels.filled(from, energy + apart + margin)?.0.unwrap_or(from);
+            // The series to fifth order reaches two channels further, its continuation four.
+            let more = if !coupled {
+                0
+            } else if formal {
+                5
+            } else {
+                3 + 2 * request.refinement
+            };
+            let needed = top.max(block.l.map_or(0, |l| l + 1));
+            let own = block.l.unwrap_or(block.m) + MOST_CHANNELS;
+            (from..=(needed.min(own.max(from)) + more)).collect()
+        }
+    };
+    if let Some(l) = block.l {
+        own_levels = sphere.channels.lowest(l, request.level.max(LISTED))?;
+        if coupled {
+            numbers = global_numbers(system, &sphere, &channels, l, &own_levels, request.level, apart)?;
+        }
+    }
+    let width = shells::width(&sphere.mesh, channels.len());
+    let order = sphere.mesh.order() * channels.len();
+    if order.saturating_mul(width + 1) > MOST_ENTRIES {
+        return Err(too_large(system, order));
+    }
+    let levels = sphere.mesh.order() * if block.l.is_some() { 1 } else { channels.len() };
+    if request.level > levels {
+        return Err(Error::spec(
+            Diagnostic::new(
+                "no-such-level",
+                format!("level {} of `{}` is out of reach", request.level, system.name),
+            )
+            .at(Some(system.place.clone())),
+        ));
+    }
+    let labelled = block.l.is_some();
+    let model =
+        Shells::new(sphere.mesh, sphere.potential, radial, channels, block.m, request.at, 1e-12 * height);
+    if !model.is_finite() {
+        return Err(undefined(system));
+    }
+    own_levels.truncate(LISTED);
+    Ok(Built {
+        size: order,
+        model: AnyModel::Real(Rc::new(model)),
+        unit: Unit::parse("eV").map_err(|fault| Error::spec(fault.diagnostic(None)))?,
+        refinable: true,
+        notes: Vec::new(),
+        numbers,
+        levels: own_levels,
+        labelled,
+        formal,
+    })
+}
+
+/// The field at a control value, V/nm.
+fn field_at(radial: &Radial, control: f64) -> f64 {
+    radial.field.as_ref().map_or(0.0, |field| field.value(control, 0.0))
+}
+
+/// The mesh fit for the level that is asked for, and that level's energy (without the field).
+fn settled_sphere(
+    system: &System,
+    radial: &Radial,
+    request: &Request<'_>,
+    block: Block,
+    formal: bool,
+) -> Result<(Sphere, f64)> {
+    let at = request.at;
+    let total: f64 = radial.shells.iter().map(|shell| shell.thickness).sum();
+    let ends = |profile: &Profile, layer: &Layer, start: f64| match profile {
+        Profile::Constant(tree) => [tree.value(at, 0.0); 2],
+        Profile::Linear(from, to) => [from.value(at, 0.0), to.value(at, 0.0)],
+        Profile::Function(tree) => [tree.value(at, start), tree.value(at, start + layer.thickness)],
+    };
+    let (mut edges, mut masses, mut lightest) = (Vec::new(), Vec::new(), f64::INFINITY);
+    let (mut low, mut high, mut outer, mut outer_mass) = (f64::INFINITY, f64::NEG_INFINITY, f64::NAN, 1.0);
+    let mut start = 0.0;
+    for shell in &radial.shells {
+        let edge = ends(&shell.edge, shell, start);
+        let mass = ends(&shell.mass, shell, start);
+        if !edge.iter().all(|x| x.is_finite()) || !mass.iter().all(|x| x.is_finite() && *x > 0.0) {
+            return Err(undefined(system));
+        }
+        edges.push(edge[0].min(edge[1]));
+        masses.push(mass[0].max(mass[1]));
+        lightest = lightest.min(mass[0]).min(mass[1]);
+        low = low.min(edge[0]).min(edge[1]);
+        high = high.max(edge[0]).max(edge[1]);
+        (outer, outer_mass) = (edge[1], mass[1]);
+        start += shell.thickness;
+    }
+    if radial.shells.is_empty() || total.is_nan() || total <= 0.0 {
+        return Err(Error::internal("an empty list of shells reached the model"));
+    }
+    let number = request.level.max(1) as f64;
+    let strength = radial.charge * radial.centre_charge * coulomb_ev_nm() / radial.permittivity;
+    let slope = [request.reach.0, at, request.reach.1]
+        .map(|control| (radial.charge * field_at(radial, control)).abs())
+        .into_iter()
+        .filter(|x| x.is_finite())
+        .fold(0.0, f64::max);
+    // Zero n of the spherical Bessel functions of order l, and number n among all l >= m,
+    // roughly and from above.
+    let turns = match block.l {
+        Some(l) => std::f64::consts::PI * number + 1.6 * l as f64 + 1.0,
+        None => 3.0 * number.sqrt() + block.m as f64 + std::f64::consts::PI,
+    };
+    let open = radial.ends == Ends::Decay;
+    let mut decay = open.then(|| {
+        let stiffness = kinetic_ev_nm2() / outer_mass;
+        let well = (0.5 * (outer - low).max(0.0) / stiffness).sqrt();
+        // Level n of a point charge decays with n in the denominator.
+        let principal = match block.l {
+            Some(l) => number + l as f64,
+            None => number.sqrt() + block.m as f64 + 0.5,
+        };
+        let charge = (-strength).max(0.0) / (2.0 * stiffness * principal);
+        well.max(charge).max(1e-3 / total)
+    });
+    let degree = if formal { OPEN_DEGREE } else { DEGREE } + 2 * request.refinement;
+    let rounds = if open { 4 } else { 1 };
+    for round in 0..rounds {
+        let energy = match decay {
+            None => (high - low) + kinetic_ev_nm2() / lightest * (turns / total) * (turns / total),
+            Some(decay) => (high - low) + kinetic_ev_nm2() / outer_mass * decay * decay,
+        };
+        let scale =
+            Scale { degree, energy, coulomb: strength.abs(), slope: if open { 0.0 } else { slope }, decay };
+        let mesh = Mesh::new(&radial.shells, &edges, &masses, &scale);
+        if mesh.order().saturating_mul(mesh.width() + 1) > MOST_ENTRIES {
+            return Err(too_large(system, mesh.order()));
+        }
+        let potential = shells::Potential::new(&mesh, radial, at);
+        let channels = Channels::new(&mesh, &potential.values(at));
+        if potential.values(at).iter().any(|x| !x.is_finite()) {
+            return Err(undefined(system));
+        }
+        let (wanted, bound) = match (block.l, open) {
+            (_, false) => (request.level, usize::MAX),
+            (Some(l), true) => {
+                let bound = channels.below(l, outer)?;
+                (request.level.min(bound), bound)
+            }
+            (None, true) => {
+                let bound = channels.filled(block.m, outer)?.1;
+                (request.level.min(bound), bound)
+            }
+        };
+        let energy = match block.l {
+            _ if wanted == 0 => outer,
+            Some(l) if wanted > channels.order() => {
+                return Err(too_large(system, channels.order() * (l + 1)));
+            }
+            Some(l) => pencil::eigenpair(&channels.hamiltonian(l), wanted)?.energy,
+            None => channels.among_all(block.m, wanted)?,
+        };
+        if round + 1 == rounds {
+            if request.level > bound {
+                let expected = if bound == 1 { "1 is".to_owned() } else { format!("{bound} are") };
+                return Err(not_bound(
+                    system,
+                    request.level,
+                    &expected,
+                    "ask for a lower level, deepen the shells, or use `ends: wall`",
+                ));
+            }
+            return Ok((Sphere { mesh, channels, potential }, energy));
+        }
+        if wanted > 0 {
+            let depth = (outer - energy).max(1e-9 * (outer - low).abs()).max(f64::MIN_POSITIVE);
+            decay = Some((depth * outer_mass / kinetic_ev_nm2()).sqrt().max(1e-3 / total));
+        }
+    }
+    Err(Error::internal("a sphere was built in no round"))
+}
+
+/// The numbers that the levels of one l have among those of all channels.
+fn global_numbers(
+    system: &System,
+    sphere: &Sphere,
+    channels: &[usize],
+    l: usize,
+    levels: &[f64],
+    asked: usize,
+    apart: f64,
+) -> Result<Vec<usize>> {
+    let mut numbers = Vec::with_capacity(levels.len());
+    for (idx, &energy) in levels.iter().enumerate() {
+        let mut number = idx + 1;
+        for &other in channels.iter().filter(|&&other| other != l) {
+            let below = sphere.channels.below(other, energy - apart)?;
+            if idx < asked && sphere.channels.below(other, energy + apart)? != below {
+                return Err(Error::spec(
+                    Diagnostic::new(
+                        "not-conserved",
+                        format!("l is no good quantum number for level {} of `{}`", idx + 1, system.name),
+                    )
+                    .found(format!("a level of l = {other} at the energy of level {} of l = {l}", idx + 1))
+                    .expected("no other level there that the field could mix in")
+                    .action("count within `where: {m: }` alone"),
+                ));
+            }
+            number += below;
+        }
+        numbers.push(number);
+    }
+    Ok(numbers)
+}
+
+fn undefined(system: &System) -> Error {
+    Error::spec(
+        Diagnostic::new("undefined", format!("edge, mass or field of `{}` is not finite", system.name))
+            .at(Some(system.place.clone()))
+            .expected("finite values and a positive mass in all shells, at the operating point"),
+    )
+}
+
+fn not_bound(system: &System, level: usize, bound: &str, action: &'static str) -> Error {
+    Error::spec(
+        Diagnostic::new(
+            "not-bound",
+            format!("level {level} of `{}` is not bound at the operating point", system.name),
+        )
+        .at(Some(system.place.clone()))
+        .found(format!("level {level}"))
+        .expected(format!("a level below the outer edge: {bound}"))
+        .action(action),
+    )
+}
+
+fn too_large(system: &System, order: usize) -> Error {
+    Error::spec(
+        Diagnostic::new("too-large", format!("`{}` needs {order} basis functions", system.name))
+            .at(Some(system.place.clone()))
+            .expected(format!("a band of at most {MOST_ENTRIES} entries"))
+            .action("ask for a lower level, or make the shells smaller"),
+    )
+}
