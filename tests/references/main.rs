@@ -7,6 +7,7 @@ mod charge_box;
 mod crossing;
 mod mathieu;
 mod quartic;
+mod radial;
 mod rotor_stark;
 mod solved;
 mod spheroidal;

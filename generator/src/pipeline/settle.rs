@@ -114,7 +114,8 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
             };
             // A coefficient far below the terms it is summed from cannot settle
             // relative to itself; the terms are its natural scale.
-            let floor = 1e-13 * fine.largest_term()[power];
+            let part = if power <= purpose.order { 1e-13 } else { 1e-11 };
+            let floor = part * fine.largest_term()[power];
             uncertainty[power] > (limit * new[power].abs()).max(floor)
         });
         let last = refinement >= first + REFINEMENTS || !built.refinable;

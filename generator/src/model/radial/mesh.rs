@@ -28,17 +28,22 @@ const PHASE: f64 = 9.0;
 /// terms in 1/r are smooth on the half-infinite one.
 const OUTER: f64 = 8.0;
 
+/// Samples of the wave number over one shell, by which it is divided.
+const SAMPLES: usize = 400;
+
+/// Decay, in powers of e, beyond which nothing of a level is left to resolve.
+const GONE: f64 = 32.0;
+
+/// Density of elements there, against the usual one.
+const SPARSE: f64 = 0.05;
+
 /// What a mesh must resolve.
-#[derive(Clone, Copy, Debug)]
-pub struct Scale {
+pub struct Scale<'a> {
     /// Degree of the elements.
     pub degree: usize,
-    /// Kinetic energy above the edges that occurs, eV.
-    pub energy: f64,
-    /// Strength of the centre's potential times radius, modulus, eV nm.
-    pub coulomb: f64,
-    /// Slope of the field's potential, eV/nm.
-    pub slope: f64,
+    /// Wave number at a radius of a shell (nm, number of the shell), 1/nm, and the rate at which
+    /// the level decays there, 0 where it moves freely, 1/nm.
+    pub wave: &'a dyn Fn(usize, f64) -> (f64, f64),
     /// Decay constant beyond the shells, 1/nm; `None` for a wall.
     pub decay: Option<f64>,
 }
@@ -95,26 +100,28 @@ pub struct Mesh {
 }
 
 impl Mesh {
-    /// Lays elements over the shells and, for open ends, beyond them. `edges` and
-    /// `masses` are the lowest edge (eV) and heaviest mass of each shell.
-    pub fn new(shells: &[Layer], edges: &[f64], masses: &[f64], scale: &Scale) -> Self {
+    /// Lays elements over the shells and, for open ends, beyond them.
+    pub fn new(shells: &[Layer], scale: &Scale<'_>) -> Self {
         let inside = lobatto(scale.degree);
-        let low = edges.iter().copied().fold(f64::INFINITY, f64::min);
         let mut pieces: Vec<Piece> = Vec::new();
         let mut faces = Vec::with_capacity(shells.len());
         let mut node = 0;
+        let last = shells.len().saturating_sub(1);
+        let total: f64 = shells.iter().map(|shell| shell.thickness).sum();
+        let far = scale.decay.map_or(total, |decay| (OUTER / decay).max(total));
+        let mut spans: Vec<(f64, f64, usize)> = Vec::with_capacity(shells.len() + 1);
         let mut start = 0.0;
-        let mut lay = |from: f64, to: f64, shell: usize, frozen: Option<f64>, node: &mut usize| {
-            let varying = shells.get(shell).is_some_and(|layer| {
-                matches!(layer.edge, Profile::Function(_)) || matches!(layer.mass, Profile::Function(_))
-            });
-            let edge = edges.get(shell).copied().unwrap_or(low);
-            let depth = scale.energy.min((edge - low).abs().max(0.6 * scale.energy))
-                + 0.25 * scale.slope * (to - from);
-            let stiffness = kinetic_ev_nm2() / masses.get(shell).copied().unwrap_or(1.0);
-            let wave = (depth.max(0.0) / stiffness).sqrt();
-            let centre = (scale.coulomb / stiffness).sqrt();
-            let ends = cuts(from, to, wave, centre, if varying { 2.0 } else { 1.0 });
+        for (idx, shell) in shells.iter().enumerate() {
+            spans.push((start, start + shell.thickness, idx));
+            start += shell.thickness;
+        }
+        if far > start {
+            spans.push((start, far, last));
+        }
+        let phases = Phases::new(&spans, scale.wave);
+        let mut lay = |span: usize, frozen: Option<f64>, node: &mut usize| {
+            let ends = phases.cuts(span);
+            let shell = spans.get(span).map_or(last, |one| one.2);
             for pair in ends.windows(2) {
                 pieces.push(Piece {
                     element: inside.clone(),
@@ -127,22 +134,21 @@ impl Mesh {
                 *node += scale.degree;
             }
         };
+        let mut start = 0.0;
         for (idx, shell) in shells.iter().enumerate() {
             faces.push(start);
-            lay(start, start + shell.thickness, idx, None, &mut node);
+            lay(idx, None, &mut node);
             start += shell.thickness;
         }
         if let Some(decay) = scale.decay {
-            let last = shells.len().saturating_sub(1);
-            let far = OUTER / decay;
             if far > start {
-                lay(start, far, last, Some(start), &mut node);
+                lay(shells.len(), Some(start), &mut node);
             }
             let element = open_end(scale.degree);
             let count = element.len();
             pieces.push(Piece {
                 element,
-                start: far.max(start),
+                start: far,
                 jacobian: 0.5 / decay,
                 first: node,
                 shell: last,
@@ -281,23 +287,78 @@ impl Mesh {
     }
 }
 
-/// Ends of elements between two radii, each with the same part of the phase
-/// `wave r + 2 centre sqrt(r)`, `finer` times the usual number.
-fn cuts(from: f64, to: f64, wave: f64, centre: f64, finer: f64) -> Vec<f64> {
-    let phase = |r: f64| wave * r + 2.0 * centre * r.sqrt();
-    let (low, high) = (phase(from), phase(to));
-    let count = libm::ceil(finer * (high - low) / PHASE);
-    let count = if count.is_finite() { (count as usize).clamp(1, 100_000) } else { 1 };
-    let mut out = Vec::with_capacity(count + 1);
-    out.push(from);
-    for k in 1..count {
-        let wanted = low + (high - low) * k as f64 / count as f64;
-        // wave s^2 + 2 centre s = wanted, s = sqrt(r), in the form without cancellation.
-        let s = wanted / (centre + (centre * centre + wave * wanted).sqrt());
-        out.push(s * s);
+/// The phase that elements must follow, sampled evenly in the square root of the radius,
+/// in which it is smooth up to a charge at the centre.
+struct Phases {
+    /// Inner and outer radius of each span.
+    spans: Vec<(f64, f64)>,
+    /// Phase from the inner end of the span to each sample's outer end.
+    sums: Vec<Vec<f64>>,
+}
+
+impl Phases {
+    fn new(spans: &[(f64, f64, usize)], wave: &dyn Fn(usize, f64) -> (f64, f64)) -> Self {
+        // Per sample, the phase over it and the decay over it.
+        let mut all: Vec<(f64, f64)> = Vec::with_capacity(SAMPLES * spans.len());
+        for &(from, to, shell) in spans {
+            let (low, high) = (from.sqrt(), to.sqrt());
+            let step = (high - low) / SAMPLES as f64;
+            for k in 0..SAMPLES {
+                let s = low + (k as f64 + 0.5) * step;
+                let (wave, decay) = wave(shell, s * s);
+                all.push((wave * 2.0 * s * step, decay * 2.0 * s * step));
+            }
+        }
+        // Decay since the last place where the level moves freely, from both sides.
+        let gone = |order: &mut dyn Iterator<Item = usize>| {
+            let mut out = vec![0.0; all.len()];
+            let mut sum = f64::INFINITY;
+            for idx in order {
+                sum = if all[idx].1 > 0.0 { sum + all[idx].1 } else { 0.0 };
+                out[idx] = sum;
+            }
+            out
+        };
+        let outwards = gone(&mut (0..all.len()));
+        let inwards = gone(&mut (0..all.len()).rev());
+        let sums = (0..spans.len())
+            .map(|span| {
+                let mut sum = 0.0;
+                (span * SAMPLES..(span + 1) * SAMPLES)
+                    .map(|idx| {
+                        let sparse = outwards[idx].min(inwards[idx]) > GONE;
+                        sum += if sparse { SPARSE * all[idx].0 } else { all[idx].0 };
+                        sum
+                    })
+                    .collect()
+            })
+            .collect();
+        Self { spans: spans.iter().map(|&(from, to, _)| (from, to)).collect(), sums }
     }
-    out.push(to);
-    out
+
+    /// Ends of elements over a span, each with the same part of its phase.
+    fn cuts(&self, span: usize) -> Vec<f64> {
+        let (Some(&(from, to)), Some(sums)) = (self.spans.get(span), self.sums.get(span)) else {
+            return Vec::new();
+        };
+        let whole = sums.last().copied().unwrap_or(0.0);
+        let count = libm::ceil(whole / PHASE);
+        let count = if count.is_finite() { (count as usize).clamp(1, 100_000) } else { 1 };
+        let (low, high) = (from.sqrt(), to.sqrt());
+        let step = (high - low) / SAMPLES as f64;
+        let mut out = Vec::with_capacity(count + 1);
+        out.push(from);
+        for k in 1..count {
+            let wanted = whole * k as f64 / count as f64;
+            let idx = sums.partition_point(|&sum| sum < wanted).min(SAMPLES - 1);
+            let before = if idx == 0 { 0.0 } else { sums[idx - 1] };
+            let part = if sums[idx] > before { (wanted - before) / (sums[idx] - before) } else { 0.5 };
+            let s = low + (idx as f64 + part) * step;
+            out.push(s * s);
+        }
+        out.push(to);
+        out
+    }
 }
 
 #[cfg(test)]
@@ -322,9 +383,9 @@ mod tests {
     #[test]
     fn an_impenetrable_sphere_has_bessel_zeros() {
         let radius = 2.0;
-        let scale = Scale { degree: 24, energy: 30.0, coulomb: 0.0, slope: 0.0, decay: None };
+        let scale = Scale { degree: 24, wave: &|_, _| (7.0, 0.0), decay: None };
         let shells = [shell(0.7, 0.5), shell(1.3, 0.5)];
-        let mesh = Mesh::new(&shells, &[0.0, 0.0], &[0.5, 0.5], &scale);
+        let mesh = Mesh::new(&shells, &scale);
         let [base, turning] = mesh.kinetic();
         for (l, zeros) in [
             (0, [std::f64::consts::PI, 2.0 * std::f64::consts::PI]),
@@ -349,12 +410,23 @@ mod tests {
 
     #[test]
     fn cuts_share_the_phase_evenly() {
-        let ends = cuts(0.0, 50.0, 0.3, 1.7, 1.0);
-        let phase = |r: f64| 0.3 * r + 3.4 * r.sqrt();
-        let step = phase(ends[1]) - phase(ends[0]);
-        assert!(ends.len() > 3 && step <= PHASE);
+        // A charge at the centre: wave number sqrt(c/r), phase 2 sqrt(c r).
+        let phases = Phases::new(&[(0.0, 50.0, 0), (50.0, 60.0, 0)], &|_, r| ((25.0 / r).sqrt(), 0.0));
+        let ends = phases.cuts(0);
+        assert!(ends.len() > 3 && ends.first() == Some(&0.0) && ends.last() == Some(&50.0));
+        let step = 10.0 * ends[1].sqrt();
+        assert!(step <= PHASE);
         for pair in ends.windows(2) {
-            assert!((phase(pair[1]) - phase(pair[0]) - step).abs() < 1e-11);
+            assert!((10.0 * (pair[1].sqrt() - pair[0].sqrt()) - step).abs() < 1e-9);
         }
+    }
+
+    #[test]
+    fn nothing_is_resolved_where_the_level_is_gone() {
+        let wave = |_: usize, r: f64| if r < 5.0 { (2.0, 0.0) } else { (2.0, 2.0) };
+        let phases = Phases::new(&[(0.0, 100.0, 0)], &wave);
+        let ends = phases.cuts(0);
+        assert!(ends.iter().filter(|&&r| r > 5.0 + 0.5 * GONE + 1.0).count() <= 2, "{ends:?}");
+        assert!(ends.iter().filter(|&&r| r < 5.0 + 0.5 * GONE).count() > 4, "{ends:?}");
     }
 }

@@ -63,6 +63,39 @@ struct Sphere {
     potential: shells::Potential,
 }
 
+impl Sphere {
+    /// The highest l, from `from` on, that may have a level below an energy: at the operating
+    /// point, and with the field's pull at full strength in every direction, for which
+    /// the potential is lowered by its largest force times the radius.
+    fn highest_channel(
+        &self,
+        radial: &Radial,
+        request: &Request<'_>,
+        from: usize,
+        energy: f64,
+        pulled: bool,
+    ) -> Result<usize> {
+        let force = [request.reach.0, request.at, request.reach.1]
+            .map(|control| (radial.charge * field_at(radial, control)).abs())
+            .into_iter()
+            .filter(|x| x.is_finite())
+            .fold(0.0, f64::max);
+        let mut top = self.channels.filled(from, energy)?.0.unwrap_or(from);
+        if pulled {
+            let lowered: Vec<f64> = self
+                .potential
+                .values(request.at)
+                .iter()
+                .zip(&self.mesh.radii)
+                .map(|(value, radius)| value - force * radius)
+                .collect();
+            let channels = Channels::new(&self.mesh, &lowered);
+            top = top.max(channels.filled(from, energy)?.0.unwrap_or(from));
+        }
+        Ok(top)
+    }
+}
+
 /// Builds the model of concentric shells.
 ///
 /// # Errors
@@ -97,20 +130,14 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
         Some(l) if !coupled => vec![l],
         _ => {
             let from = block.m;
-            let reach = [request.reach.0, request.at, request.reach.1]
-                .map(|control| (radial.charge * field_at(radial, control)).abs())
-                .into_iter()
-                .filter(|x| x.is_finite())
-                .fold(0.0, f64::max);
-            let margin = if formal || !coupled { 0.0 } else { 2.0 * reach * sphere.mesh.radius() };
-            let top = sphere.channels.filled(from, energy + apart + margin)?.0.unwrap_or(from);
+            let top = sphere.highest_channel(radial, request, from, energy + apart, !formal && coupled)?;
             // The series to fifth order reaches two channels further, its continuation four.
             let more = if !coupled {
                 0
             } else if formal {
                 5
             } else {
-                3 + 2 * request.refinement
+                3 + request.refinement
             };
             let needed = top.max(block.l.map_or(0, |l| l + 1));
             let own = block.l.unwrap_or(block.m) + MOST_CHANNELS;
@@ -211,6 +238,7 @@ fn settled_sphere(
         Some(l) => std::f64::consts::PI * number + 1.6 * l as f64 + 1.0,
         None => 3.0 * number.sqrt() + block.m as f64 + std::f64::consts::PI,
     };
+    let boxed = kinetic_ev_nm2() / lightest * (turns / total) * (turns / total);
     let open = radial.ends == Ends::Decay;
     let mut decay = open.then(|| {
         let stiffness = kinetic_ev_nm2() / outer_mass;
@@ -224,15 +252,34 @@ fn settled_sphere(
         well.max(charge).max(1e-3 / total)
     });
     let degree = if formal { OPEN_DEGREE } else { DEGREE } + 2 * request.refinement;
-    let rounds = if open { 4 } else { 1 };
+    let rounds = if open { 4 } else { 2 };
+    let mut known = None;
     for round in 0..rounds {
-        let energy = match decay {
-            None => (high - low) + kinetic_ev_nm2() / lightest * (turns / total) * (turns / total),
-            Some(decay) => (high - low) + kinetic_ev_nm2() / outer_mass * decay * decay,
+        let stiffness = |shell: usize| kinetic_ev_nm2() / masses.get(shell).copied().unwrap_or(1.0);
+        let edge = |shell: usize, radius: f64| match radial.shells.get(shell).map(|one| &one.edge) {
+            Some(Profile::Function(tree)) => tree.value(at, radius.min(total)),
+            _ => edges.get(shell).copied().unwrap_or(low),
         };
-        let scale =
-            Scale { degree, energy, coulomb: strength.abs(), slope: if open { 0.0 } else { slope }, decay };
-        let mesh = Mesh::new(&radial.shells, &edges, &masses, &scale);
+        let floor = decay.map_or(0.5 * boxed, |decay| 0.5 * kinetic_ev_nm2() / outer_mass * decay * decay);
+        let wave = |shell: usize, radius: f64| {
+            let potential = edge(shell, radius) + strength / radius;
+            let pull = if open { 0.0 } else { slope * radius };
+            // Before any level is known, everything up to the highest edge is resolved.
+            let (energy, flat) = match known {
+                Some(energy) => (energy, 0.0),
+                None if open => (low, high - low),
+                None => (low + boxed, high - low),
+            };
+            let depth = (energy - potential).abs().max((potential - pull - energy).abs()).max(floor) + flat;
+            let barrier = if known.is_some() { (potential - pull - energy).max(0.0) } else { 0.0 };
+            // A shell that varies may do so faster than the level.
+            let rough = radial.shells.get(shell).is_some_and(|one| {
+                matches!(one.edge, Profile::Function(_)) || matches!(one.mass, Profile::Function(_))
+            });
+            let finer = if rough { 1.5 } else { 1.0 };
+            (finer * (depth / stiffness(shell)).sqrt(), (barrier / stiffness(shell)).sqrt())
+        };
+        let mesh = Mesh::new(&radial.shells, &Scale { degree, wave: &wave, decay });
         if mesh.order().saturating_mul(mesh.width() + 1) > MOST_ENTRIES {
             return Err(too_large(system, mesh.order()));
         }
@@ -272,7 +319,8 @@ fn settled_sphere(
             }
             return Ok((Sphere { mesh, channels, potential }, energy));
         }
-        if wanted > 0 {
+        known = Some(energy);
+        if wanted > 0 && open {
             let depth = (outer - energy).max(1e-9 * (outer - low).abs()).max(f64::MIN_POSITIVE);
             decay = Some((depth * outer_mass / kinetic_ev_nm2()).sqrt().max(1e-3 / total));
         }
