@@ -4,3 +4,4 @@ mod calls;
 mod demo;
 mod hostile;
 mod schema;
+mod shells;

@@ -55,7 +55,7 @@ pub fn build(system: &System, matrix: &Matrix, request: &Request<'_>) -> Result<
         refinable: false,
         size: order,
         notes: Vec::new(),
-        numbers: Vec::new(),
+        numbers: None,
         levels: Vec::new(),
         labelled: false,
         formal: false,

@@ -20,6 +20,7 @@ use std::rc::Rc;
 
 use nalgebra::Complex;
 
+use crate::diagnostic::Result;
 use crate::pencil::{Hermitian, Scalar, State};
 
 /// Highest power of the control that the expansion holds.
@@ -123,6 +124,9 @@ pub enum AnyModel {
     Complex(Rc<dyn Model<C64>>),
 }
 
+/// From the number of a level in its block to its number in the model.
+pub type Numbers = Rc<dyn Fn(usize) -> Result<usize>>;
+
 /// A model with what the rest of the run must know of it.
 #[derive(Clone)]
 pub struct Built {
@@ -138,9 +142,9 @@ pub struct Built {
     pub size: usize,
     /// Remarks for the record, for example that a bound holds for the truncated basis.
     pub notes: Vec<crate::outcome::Note>,
-    /// The number in the model of each level of the block, where the model holds more than
-    /// the block; else empty.
-    pub numbers: Vec<usize>,
+    /// The number in the model of a level of the block, where the model holds more than
+    /// the block.
+    pub numbers: Option<Numbers>,
     /// The first levels of the block, where the model holds more; else empty.
     pub levels: Vec<f64>,
     /// True if levels are counted by l, so that every state is named by its own l.
@@ -151,14 +155,12 @@ pub struct Built {
 }
 
 impl Built {
-    /// The number in the model of a level of the block; 0 for one that it does not
-    /// hold, which no model has.
-    #[must_use]
-    pub fn number(&self, level: usize) -> usize {
-        if self.numbers.is_empty() {
-            return level;
-        }
-        level.checked_sub(1).and_then(|idx| self.numbers.get(idx)).copied().unwrap_or(0)
+    /// The number in the model of a level of the block.
+    ///
+    /// # Errors
+    /// A level that its block does not tell from those of others, or a solve that fails.
+    pub fn number(&self, level: usize) -> Result<usize> {
+        self.numbers.as_ref().map_or(Ok(level), |numbers| numbers(level))
     }
 }
 
@@ -183,7 +185,7 @@ pub struct Request<'a> {
 /// # Errors
 /// A level or block that the system does not have, an expression that is not
 /// finite where it is needed, or a problem too large.
-pub fn build(system: &crate::spec::System, request: &Request<'_>) -> crate::diagnostic::Result<Built> {
+pub fn build(system: &crate::spec::System, request: &Request<'_>) -> Result<Built> {
     use crate::spec::Kind;
     match &system.kind {
         Kind::Layers(layers) => layers::build(system, layers, request),

@@ -61,15 +61,15 @@ impl Numerical {
         for (end, control) in ends.iter_mut().zip([from, to]) {
             for term in &sum.levels {
                 let number = |built: &Built| built.number(term.reference.level);
-                let fine = energy(&term.settled.built.model, control, number(&term.settled.built))?;
+                let fine = energy(&term.settled.built.model, control, number(&term.settled.built)?)?;
                 let rounding = f64::EPSILON * fine.abs();
                 let change = match &term.settled.coarse {
                     None => 0.0,
                     Some(coarse) => {
                         // A coarser basis may number its levels otherwise.
-                        let there = energy(&coarse.model, control, number(coarse))?;
+                        let there = energy(&coarse.model, control, number(coarse)?)?;
                         let here = if shift {
-                            term.settled.level.energies()[0] - energy(&coarse.model, at, number(coarse))?
+                            term.settled.level.energies()[0] - energy(&coarse.model, at, number(coarse)?)?
                         } else {
                             0.0
                         };
@@ -381,7 +381,7 @@ fn pair_form(formula: &Formula, sum: &Sum) -> Result<Proposed> {
     remove(first);
     for term in sum.levels.iter().skip(1) {
         let same = term.system == first.system && term.reference.block == first.reference.block;
-        if same && term.settled.built.number(term.reference.level) == partner {
+        if same && term.settled.built.number(term.reference.level)? == partner {
             weight[1] += term.times();
             remove(term);
         } else if same && term.reference.level == first.reference.level {

@@ -78,6 +78,7 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
                 refinement,
             },
         )
+        .map_err(|error| locate(error, level))
     };
     let mut coarse_built = build(first)?;
     let mut coarse = series::solve(&coarse_built, level.level).map_err(|e| locate(e, level))?;

@@ -43,7 +43,7 @@ pub(super) const SAFETY: f64 = 4.0;
 /// `no-such-level` (spec) beyond the number of states; `near-degenerate`
 /// (accuracy) if a neighbour is too close to decide whether it is degenerate.
 pub fn solve(built: &Built, number: usize) -> Result<AnyLevel> {
-    let own = built.number(number);
+    let own = built.number(number)?;
     Ok(match &built.model {
         AnyModel::Real(model) => AnyLevel::Real(Box::new(within(built, level(model, own)?))),
         AnyModel::Complex(model) => AnyLevel::Complex(Box::new(within(built, level(model, own)?))),

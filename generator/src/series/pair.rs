@@ -32,7 +32,8 @@ const POWERS: usize = 5;
 /// # Errors
 /// `no-such-level` and `no-partner` (spec); those of the solves.
 pub fn pair(built: &Built, number: usize, partner: Option<usize>) -> Result<PairSeries> {
-    let (number, partner) = (built.number(number), partner.map(|partner| built.number(partner)));
+    let (number, partner) =
+        (built.number(number)?, partner.map(|partner| built.number(partner)).transpose()?);
     match &built.model {
         AnyModel::Real(model) => pair_of(model, number, partner),
         AnyModel::Complex(model) => pair_of(model, number, partner),

@@ -99,7 +99,7 @@ pub fn build(system: &System, layers: &Layers, request: &Request<'_>) -> Result<
         refinable: true,
         size,
         notes: Vec::new(),
-        numbers: Vec::new(),
+        numbers: None,
         levels: Vec::new(),
         labelled: false,
         formal: false,

@@ -453,7 +453,7 @@ impl<'a> Problem<'a> {
             refinable,
             size: order,
             notes,
-            numbers: Vec::new(),
+            numbers: None,
             levels: Vec::new(),
             labelled: false,
             formal: false,

@@ -27,7 +27,6 @@ impl Block {
     /// the operating point.
     pub fn read(system: &System, radial: &Radial, request: &Request<'_>) -> Result<Self> {
         let value = |name: &str| request.block.iter().find(|(key, _)| key == name).map(|(_, value)| *value);
-        let wrong = |code: &'static str, text: String| Error::spec(Diagnostic::new(code, text));
         let Some(m) = value("m") else {
             let advice = if value("l").is_some() { "add `m`" } else { "add `where: {l: 0, m: 0}`" };
             return Err(Error::spec(
@@ -39,8 +38,12 @@ impl Block {
                 .action(advice),
             ));
         };
-        for number in [Some(m), value("l")].into_iter().flatten().filter(|x| x.abs() > HIGHEST) {
-            return Err(wrong("no-such-block", format!("a quantum number of {number} is out of reach")));
+        let far = [Some(m), value("l")].into_iter().flatten().find(|x| x.abs() > HIGHEST);
+        if let Some(number) = far {
+            return Err(Error::spec(
+                Diagnostic::new("no-such-block", format!("a quantum number of {number} is out of reach"))
+                    .expected(format!("at most {HIGHEST}")),
+            ));
         }
         let m = m.abs() as usize;
         let l = value("l").map(|l| l as usize);

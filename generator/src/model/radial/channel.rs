@@ -9,9 +9,10 @@ use crate::diagnostic::{Error, Result};
 use crate::pencil::{self, Banded, Hermitian};
 
 /// Channels beyond this l are not looked into.
-const HIGHEST_L: usize = 1200;
+const HIGHEST_L: usize = 400;
 
 /// The uncoupled radial problems.
+#[derive(Clone)]
 pub struct Channels {
     base: Banded<f64>,
     turning: Banded<f64>,

@@ -29,7 +29,7 @@ use channel::Channels;
 use mesh::{Mesh, Scale};
 use shells::Shells;
 
-use super::{AnyModel, Built, Request};
+use super::{AnyModel, Built, Numbers, Request};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::pencil;
 use crate::spec::{Ends, Layer, Profile, Radial, System};
@@ -53,7 +53,7 @@ const MOST_CHANNELS: usize = 100;
 /// no good quantum number.
 const TOGETHER: f64 = 1e-9;
 
-/// Levels of a block that are numbered at least.
+/// Levels of a block that are listed.
 const LISTED: usize = 12;
 
 /// The radial problem without a field.
@@ -124,7 +124,7 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
     let height = (energy - lowest_edge).abs();
     let apart = TOGETHER * height;
 
-    let mut numbers = Vec::new();
+    let mut numbers: Option<Numbers> = None;
     let mut own_levels = Vec::new();
     let channels: Vec<usize> = match block.l {
         Some(l) if !coupled => vec![l],
@@ -132,12 +132,15 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
             let from = block.m;
             let top = sphere.highest_channel(radial, request, from, energy + apart, !formal && coupled)?;
             // The series to fifth order reaches two channels further, its continuation four.
+            // A level in a field is spread over several from the start.
             let more = if !coupled {
                 0
             } else if formal {
                 5
-            } else {
+            } else if at_field == 0.0 {
                 3 + request.refinement
+            } else {
+                6 + 2 * request.refinement
             };
             let needed = top.max(block.l.map_or(0, |l| l + 1));
             let own = block.l.unwrap_or(block.m) + MOST_CHANNELS;
@@ -145,9 +148,18 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
         }
     };
     if let Some(l) = block.l {
-        own_levels = sphere.channels.lowest(l, request.level.max(LISTED))?;
+        own_levels = sphere.channels.lowest(l, LISTED)?;
         if coupled {
-            numbers = global_numbers(system, &sphere, &channels, l, &own_levels, request.level, apart)?;
+            let numbering = Numbering {
+                channels: sphere.channels.clone(),
+                all: channels.clone(),
+                l,
+                m: block.m,
+                apart,
+                system: system.name.clone(),
+            };
+            numbering.number(request.level)?;
+            numbers = Some(Rc::new(move |level| numbering.number(level)));
         }
     }
     let width = shells::width(&sphere.mesh, channels.len());
@@ -171,7 +183,6 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
     if !model.is_finite() {
         return Err(undefined(system));
     }
-    own_levels.truncate(LISTED);
     Ok(Built {
         size: order,
         model: AnyModel::Real(Rc::new(model)),
@@ -328,37 +339,41 @@ fn settled_sphere(
     Err(Error::internal("a sphere was built in no round"))
 }
 
-/// The numbers that the levels of one l have among those of all channels.
-fn global_numbers(
-    system: &System,
-    sphere: &Sphere,
-    channels: &[usize],
+/// How the levels of one l are numbered among those of all channels.
+struct Numbering {
+    channels: Channels,
+    all: Vec<usize>,
     l: usize,
-    levels: &[f64],
-    asked: usize,
+    m: usize,
     apart: f64,
-) -> Result<Vec<usize>> {
-    let mut numbers = Vec::with_capacity(levels.len());
-    for (idx, &energy) in levels.iter().enumerate() {
-        let mut number = idx + 1;
-        for &other in channels.iter().filter(|&&other| other != l) {
-            let below = sphere.channels.below(other, energy - apart)?;
-            if idx < asked && sphere.channels.below(other, energy + apart)? != below {
+    system: String,
+}
+
+impl Numbering {
+    fn number(&self, level: usize) -> Result<usize> {
+        if level == 0 || level > self.channels.order() {
+            return Err(Error::spec(Diagnostic::new("no-such-level", format!("there is no level {level}"))));
+        }
+        let energy = pencil::eigenpair(&self.channels.hamiltonian(self.l), level)?.energy;
+        let mut number = level;
+        for &other in self.all.iter().filter(|&&other| other != self.l) {
+            let below = self.channels.below(other, energy - self.apart)?;
+            if self.channels.below(other, energy + self.apart)? != below {
+                let text = format!("l is no good quantum number for level {level} of `{}`", self.system);
                 return Err(Error::spec(
-                    Diagnostic::new(
-                        "not-conserved",
-                        format!("l is no good quantum number for level {} of `{}`", idx + 1, system.name),
-                    )
-                    .found(format!("a level of l = {other} at the energy of level {} of l = {l}", idx + 1))
-                    .expected("no other level there that the field could mix in")
-                    .action("count within `where: {m: }` alone"),
+                    Diagnostic::new("not-conserved", text)
+                        .found(format!(
+                            "a level of l = {other} at the energy of level {level} of l = {}",
+                            self.l
+                        ))
+                        .expected("no other level there that the field could mix in")
+                        .action(format!("count within `where: {{m: {}}}`", self.m)),
                 ));
             }
             number += below;
         }
-        numbers.push(number);
+        Ok(number)
     }
-    Ok(numbers)
 }
 
 fn undefined(system: &System) -> Error {
