@@ -12,6 +12,8 @@
 //! Source: Parlett, *The Symmetric Eigenvalue Problem* (1998), chapters 3 and 4
 //! (from memory).
 
+use std::rc::Rc;
+
 use super::{Banded, Eigenpair, Scalar, State};
 use crate::diagnostic::{Error, Result};
 
@@ -30,6 +32,41 @@ pub(super) struct BandFactor<T> {
     /// Rows of `L` below the unit diagonal, `width` entries each.
     lower: Vec<T>,
     pivots: Vec<f64>,
+    envelope: Rc<Envelope>,
+}
+
+/// Where factors can differ from zero: elements that are full blocks on the
+/// diagonal fill only a third of the work that their band would.
+#[derive(Debug)]
+struct Envelope {
+    /// Per row, the first column.
+    from: Vec<usize>,
+    /// Per column, one past the last row.
+    to: Vec<usize>,
+}
+
+impl Envelope {
+    fn new<T: Scalar>(band: &Banded<T>) -> Self {
+        let mut to: Vec<usize> = (1..=band.order).collect();
+        for row in 0..band.order {
+            let first = row.saturating_sub(band.width);
+            let used = (first..row).find(|&column| !band.get(row, column).is_zero());
+            if let Some(end) = used.and_then(|column| to.get_mut(column)) {
+                *end = row + 1;
+            }
+        }
+        // Elimination fills every row that an earlier column has reached.
+        let mut reached = 0;
+        for end in &mut to {
+            reached = reached.max(*end);
+            *end = reached;
+        }
+        let mut from: Vec<usize> = Vec::with_capacity(band.order);
+        for (column, &end) in to.iter().enumerate() {
+            from.resize(from.len().max(end), column);
+        }
+        Self { from, to }
+    }
 }
 
 impl<T: Scalar> BandFactor<T> {
@@ -44,7 +81,7 @@ impl<T: Scalar> BandFactor<T> {
         let mut x = right.clone();
         let values = x.as_mut_slice();
         for row in 1..n {
-            let from = row.saturating_sub(w);
+            let from = self.envelope.from[row];
             let factors = &self.lower[row * w + w - (row - from)..(row + 1) * w];
             let mut sum = values[row];
             for (l, v) in factors.iter().zip(&values[from..row]) {
@@ -56,7 +93,7 @@ impl<T: Scalar> BandFactor<T> {
             *v = v.unscale(*d);
         }
         for row in (1..n).rev() {
-            let from = row.saturating_sub(w);
+            let from = self.envelope.from[row];
             let factors = &self.lower[row * w + w - (row - from)..(row + 1) * w];
             let here = values[row];
             for (l, v) in factors.iter().zip(&mut values[from..row]) {
@@ -82,11 +119,20 @@ fn norm<T: Scalar>(band: &Banded<T>) -> f64 {
     sums.into_iter().fold(0.0, f64::max)
 }
 
+/// Columns that are eliminated together.
+const PANEL: usize = 4;
+
 /// One attempt; the largest factor comes with it.
 ///
-/// Outer products: each finished column is taken out of the rows after it, so
-/// that the innermost loop runs over neighbours that do not wait for each other.
-fn attempt<T: Scalar>(band: &Banded<T>, shift: f64, floor: f64) -> (BandFactor<T>, f64) {
+/// Outer products, [`PANEL`] columns at a time: each later element is read once per
+/// panel, its subtractions stay in the order of the columns, and the innermost loop
+/// runs over neighbours that do not wait for each other.
+fn attempt<T: Scalar>(
+    band: &Banded<T>,
+    envelope: &Rc<Envelope>,
+    shift: f64,
+    floor: f64,
+) -> (BandFactor<T>, f64) {
     let (n, w) = (band.order, band.width);
     let mut work = band.entries.clone();
     for diagonal in work.iter_mut().skip(w).step_by(w + 1) {
@@ -94,42 +140,101 @@ fn attempt<T: Scalar>(band: &Banded<T>, shift: f64, floor: f64) -> (BandFactor<T
     }
     let mut lower = vec![T::zero(); n * w];
     let mut pivots: Vec<f64> = Vec::with_capacity(n);
-    let mut column = vec![T::zero(); w];
-    let mut conjugates = vec![T::zero(); w];
-    let mut growth = 0.0_f64;
-    for j in 0..n {
-        let mut pivot = work[j * (w + 1) + w].real();
-        // An exactly singular leading block: any tiny pivot of either sign is right.
-        if pivot.abs() < floor {
-            pivot = if pivot < 0.0 { -floor } else { floor };
+    // Conjugated factors of the panel's columns, per row below its first.
+    let mut factors: [Vec<T>; PANEL] = std::array::from_fn(|_| vec![T::zero(); w + PANEL]);
+    let mut start = 0;
+    while start < n {
+        let panel = PANEL.min(n - start);
+        let end = envelope.to[start + panel - 1];
+        let mut inverses = [0.0; PANEL];
+        // The rows of the panel itself, with its pivots.
+        for row in start..start + panel {
+            let below = row - start;
+            let line = &work[row * (w + 1)..(row + 1) * (w + 1)];
+            let own = &mut lower[row * w..(row + 1) * w];
+            let elements = eliminate(below, below, (line, own), &inverses, &mut factors);
+            let mut diagonal = line[w];
+            for (before, factor) in elements[..below].iter().zip(&factors) {
+                diagonal -= *before * factor[below];
+            }
+            let mut pivot = diagonal.real();
+            // An exactly singular leading block: any tiny pivot of either sign is right.
+            if pivot.abs() < floor {
+                pivot = if pivot < 0.0 { -floor } else { floor };
+            }
+            pivots.push(pivot);
+            inverses[below] = 1.0 / pivot;
         }
-        pivots.push(pivot);
-        let reach = w.min(n - 1 - j);
-        let inverse = 1.0 / pivot;
-        for k in 0..reach {
-            let row = j + 1 + k;
-            let element = work[row * (w + 1) + w - 1 - k];
-            let factor = element.scale(inverse);
-            growth = growth.max(factor.norm1());
-            lower[row * w + w - 1 - k] = factor;
-            column[k] = element;
-            conjugates[k] = factor.conjugate();
-        }
-        for (k, &element) in column[..reach].iter().enumerate() {
-            let end = (j + 1 + k) * (w + 1) + w + 1;
-            let row = &mut work[end - 1 - k..end];
-            for (slot, &factor) in row.iter_mut().zip(&conjugates[..=k]) {
-                *slot -= element * factor;
+        let inner: [[T; PANEL]; PANEL] = std::array::from_fn(|k| std::array::from_fn(|c| factors[k][c]));
+        for row in start + panel..end {
+            let below = row - start;
+            let line = &mut work[row * (w + 1)..(row + 1) * (w + 1)];
+            let own = &mut lower[row * w..(row + 1) * w];
+            let [e0, e1, e2, e3] = if panel == PANEL && below <= w {
+                // What `eliminate` does, written out: this is where the time goes.
+                let place = w - below;
+                let (source, target) = (&line[place..place + PANEL], &mut own[place..place + PANEL]);
+                let e0 = source[0];
+                let e1 = source[1] - e0 * inner[0][1];
+                let e2 = source[2] - e0 * inner[0][2] - e1 * inner[1][2];
+                let e3 = source[3] - e0 * inner[0][3] - e1 * inner[1][3] - e2 * inner[2][3];
+                let elements = [e0, e1, e2, e3];
+                for k in 0..PANEL {
+                    target[k] = elements[k].scale(inverses[k]);
+                    factors[k][below] = target[k].conjugate();
+                }
+                elements
+            } else {
+                eliminate(below, panel, (line, own), &inverses, &mut factors)
+            };
+            let count = below + 1 - panel;
+            let line = &mut line[w + 1 - count..][..count];
+            let [f0, f1, f2, f3] = factors.each_ref().map(|factor| &factor[panel..][..count]);
+            for k in 0..count {
+                line[k] = line[k] - e0 * f0[k] - e1 * f1[k] - e2 * f2[k] - e3 * f3[k];
             }
         }
+        start += panel;
     }
-    (BandFactor { shift, width: w, lower, pivots }, growth)
+    let growth = lower.iter().map(|factor| factor.norm1()).fold(0.0, f64::max);
+    (BandFactor { shift, width: w, lower, pivots, envelope: envelope.clone() }, growth)
+}
+
+/// The elements of one row in the first `count` columns of a panel once the columns
+/// before each are taken out; their factors go into the row of `L` and into `factors`.
+/// `below`: rows below the first of the panel.
+fn eliminate<T: Scalar>(
+    below: usize,
+    count: usize,
+    (line, own): (&[T], &mut [T]),
+    inverses: &[f64; PANEL],
+    factors: &mut [Vec<T>; PANEL],
+) -> [T; PANEL] {
+    let w = own.len();
+    let mut elements = [T::zero(); PANEL];
+    for column in 0..count {
+        if below - column > w {
+            factors[column][below] = T::zero();
+            continue;
+        }
+        let place = w + column - below;
+        let mut element = line[place];
+        for (before, factor) in elements[..column].iter().zip(factors.iter()) {
+            element -= *before * factor[column];
+        }
+        let factor = element.scale(inverses[column]);
+        own[place] = factor;
+        elements[column] = element;
+        factors[column][below] = factor.conjugate();
+    }
+    elements
 }
 
 /// A band with what every factorisation of it needs.
 pub(super) struct Pencil<'a, T> {
     band: &'a Banded<T>,
     norm: f64,
+    envelope: Rc<Envelope>,
 }
 
 impl<'a, T: Scalar> Pencil<'a, T> {
@@ -142,20 +247,20 @@ impl<'a, T: Scalar> Pencil<'a, T> {
         if !norm.is_finite() {
             return Err(Error::internal("a matrix element is not finite"));
         }
-        Ok(Self { band, norm })
+        Ok(Self { band, norm, envelope: Rc::new(Envelope::new(band)) })
     }
 
     /// Factors of `H - shift`.
     pub(super) fn factor(&self, shift: f64) -> BandFactor<T> {
         let unit = f64::EPSILON * self.norm.max(f64::MIN_POSITIVE);
         let floor = 1e-3 * unit;
-        let mut best = attempt(self.band, shift, floor);
+        let mut best = attempt(self.band, &self.envelope, shift, floor);
         let mut nudge = unit;
         for _ in 0..14 {
             if best.1 <= GROWTH {
                 break;
             }
-            let next = attempt(self.band, shift + nudge, floor);
+            let next = attempt(self.band, &self.envelope, shift + nudge, floor);
             if next.1 < best.1 {
                 best = next;
             }
@@ -169,7 +274,7 @@ impl<'a, T: Scalar> Pencil<'a, T> {
         let mut out = State::zeros(n);
         let (source, target) = (x.as_slice(), out.as_mut_slice());
         for row in 0..n {
-            let from = row.saturating_sub(w);
+            let from = self.envelope.from[row];
             let entries = &self.band.entries[row * (w + 1) + w - (row - from)..(row + 1) * (w + 1)];
             let here = source[row];
             let mut sum = T::zero();
@@ -214,11 +319,18 @@ impl<'a, T: Scalar> Pencil<'a, T> {
         }
         let (mut energy, mut residual) = self.quotient(&x);
         let fine = 64.0 * f64::EPSILON * self.norm;
+        let mut factor: Option<BandFactor<T>> = None;
         for _ in 0..16 {
             if residual <= 2.0 * f64::EPSILON * energy.abs() {
                 break;
             }
-            let mut next = self.factor(energy).solve(&x);
+            // Near convergence the last shift is as good as a new one.
+            let used = match factor.take().filter(|_| residual <= fine) {
+                Some(kept) => kept,
+                None => self.factor(energy),
+            };
+            let mut next = used.solve(&x);
+            factor = Some(used);
             if !clean(&mut next) {
                 break;
             }
@@ -238,6 +350,49 @@ impl<'a, T: Scalar> Pencil<'a, T> {
             return None;
         }
         Some((energy, residual, x))
+    }
+
+    /// `(H - energy) x = right` outside `space`; the factors are those near `energy`.
+    pub(super) fn reduced(
+        &self,
+        factor: &BandFactor<T>,
+        energy: f64,
+        space: &[State<T>],
+        right: &State<T>,
+    ) -> State<T> {
+        let project = |state: &mut State<T>| {
+            for member in space {
+                let amount = member.dotc(state);
+                state.axpy(-amount, member, T::one());
+            }
+        };
+        let mut rest = right.clone();
+        project(&mut rest);
+        let size = rest.norm();
+        let mut out = State::zeros(right.len());
+        let mut last = f64::INFINITY;
+        for _ in 0..6 {
+            let mut step = factor.solve(&rest);
+            project(&mut step);
+            let candidate = &out + &step;
+            let mut left = right.clone();
+            let mut image = self.apply(&candidate);
+            image.axpy(-T::from_real(energy), &candidate, T::one());
+            left -= image;
+            project(&mut left);
+            let now = left.norm();
+            if !now.is_finite() || now >= last {
+                break;
+            }
+            (out, rest) = (candidate, left);
+            let settled = now > 0.1 * last || now <= f64::EPSILON * size;
+            last = now;
+            if settled {
+                break;
+            }
+        }
+        project(&mut out);
+        out
     }
 
     /// A start that has a part along every state.
@@ -500,6 +655,48 @@ impl<'a, T: Scalar> Ladder<'a, T> {
         (above == below + 1).then_some(Eigenpair { number: above, energy, state })
     }
 
+    /// The levels that warm starts lead to, where `window` is known to hold just as
+    /// many levels as there are starts, numbered from `first`; `None` if a start led astray.
+    pub(super) fn within(
+        &mut self,
+        first: usize,
+        guesses: &[State<T>],
+        window: (f64, f64),
+    ) -> Option<Vec<Eigenpair<T>>> {
+        let narrow = 4.0 * f64::EPSILON * self.pencil.norm;
+        let mut found = Vec::with_capacity(guesses.len());
+        for guess in guesses {
+            let (energy, residual, state) = self.pencil.polish(guess.clone(), &[])?;
+            let slack = (4.0 * residual).max(2.0 * narrow);
+            if !(energy - slack > window.0 && energy + slack < window.1) {
+                return None;
+            }
+            found.push(Eigenpair { number: first, energy, state });
+        }
+        found.sort_by(|a, b| a.energy.total_cmp(&b.energy));
+        for (idx, pair) in found.iter_mut().enumerate() {
+            pair.number = first + idx;
+        }
+        let apart = found.windows(2).all(|two| two[1].energy - two[0].energy > 100.0 * narrow);
+        apart.then_some(found)
+    }
+
+    /// A lower bound of the distance from a level to its nearest neighbour, no better than
+    /// a few counts give it; 0 if there is hardly any.
+    pub(super) fn apart(&mut self, pair: &Eigenpair<T>) -> f64 {
+        let narrow = 8.0 * f64::EPSILON * self.pencil.norm;
+        let mut g = pair.energy.abs();
+        while g > narrow {
+            let alone = (pair.number == 1 || self.count(pair.energy - g) == pair.number - 1)
+                && (pair.number == self.pencil.band.order || self.count(pair.energy + g) == pair.number);
+            if alone {
+                return g;
+            }
+            g *= 0.25;
+        }
+        0.0
+    }
+
     /// A lower bound, within a fifth, of the distance from a level to its nearest
     /// neighbour; `hint` is where the search starts.
     pub(super) fn gap(&mut self, pair: &Eigenpair<T>, hint: f64) -> f64 {
@@ -539,44 +736,6 @@ impl<'a, T: Scalar> Ladder<'a, T> {
             }
         }
         good
-    }
-
-    /// `(H - energy) x = right` outside `space`.
-    pub(super) fn reduced(&self, energy: f64, space: &[State<T>], right: &State<T>) -> State<T> {
-        let project = |state: &mut State<T>| {
-            for member in space {
-                let amount = member.dotc(state);
-                state.axpy(-amount, member, T::one());
-            }
-        };
-        let factor = self.pencil.factor(energy);
-        let mut rest = right.clone();
-        project(&mut rest);
-        let size = rest.norm();
-        let mut out = State::zeros(right.len());
-        let mut last = f64::INFINITY;
-        for _ in 0..6 {
-            let mut step = factor.solve(&rest);
-            project(&mut step);
-            let candidate = &out + &step;
-            let mut left = right.clone();
-            let mut image = self.pencil.apply(&candidate);
-            image.axpy(-T::from_real(energy), &candidate, T::one());
-            left -= image;
-            project(&mut left);
-            let now = left.norm();
-            if !now.is_finite() || now >= last {
-                break;
-            }
-            (out, rest) = (candidate, left);
-            let settled = now > 0.1 * last || now <= f64::EPSILON * size;
-            last = now;
-            if settled {
-                break;
-            }
-        }
-        project(&mut out);
-        out
     }
 }
 
@@ -665,7 +824,9 @@ mod tests {
             prop_assume!(apart > 1e-6);
             prop_assert!((pair.state.dot(&exact.state).abs() - 1.0).abs() < 1e-6);
             let right = State::from_fn(30, |row, _| ((row * 7 % 11) as f64) - 4.0);
-            let solved = ladder.reduced(pair.energy, std::slice::from_ref(&pair.state), &right);
+            let factor = ladder.pencil.factor(pair.energy);
+            let space = std::slice::from_ref(&pair.state);
+            let solved = ladder.pencil.reduced(&factor, pair.energy, space, &right);
             let mut expected = State::zeros(30);
             for other in all.iter().filter(|o| o.number != number) {
                 expected.axpy(other.state.dot(&right) / (other.energy - exact.energy), &other.state, 1.0);

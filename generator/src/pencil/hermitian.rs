@@ -71,8 +71,19 @@ impl<T: Scalar> Hermitian<T> {
         match self {
             Self::Zero(_) => true,
             Self::Diagonal(entries) => entries.iter().all(|&x| x == 0.0),
-            Self::Banded(band) => band.entries.iter().all(|x| x.modulus_squared() == 0.0),
-            Self::Dense(matrix) => matrix.iter().all(|x| x.modulus_squared() == 0.0),
+            Self::Banded(band) => band.entries.iter().all(|x| *x == T::zero()),
+            Self::Dense(matrix) => matrix.iter().all(|x| *x == T::zero()),
+        }
+    }
+
+    /// True if every element is finite.
+    #[must_use]
+    pub fn is_finite(&self) -> bool {
+        match self {
+            Self::Zero(_) => true,
+            Self::Diagonal(entries) => entries.iter().all(|x| x.is_finite()),
+            Self::Banded(band) => band.entries.iter().all(|x| x.is_finite()),
+            Self::Dense(matrix) => matrix.iter().all(|x| x.is_finite()),
         }
     }
 
@@ -87,14 +98,18 @@ impl<T: Scalar> Hermitian<T> {
             ),
             Self::Banded(band) => {
                 let mut out = State::zeros(band.order);
-                for row in 0..band.order {
-                    for column in row.saturating_sub(band.width)..=row {
-                        let element = band.get(row, column);
-                        out[row] += element * state[column];
-                        if column != row {
-                            out[column] += element.conjugate() * state[row];
-                        }
+                let (source, target) = (state.as_slice(), out.as_mut_slice());
+                for (row, line) in band.entries.chunks_exact(band.width + 1).enumerate() {
+                    let from = row.saturating_sub(band.width);
+                    let (line, here) = (&line[band.width - (row - from)..], source[row]);
+                    let mut sum = T::zero();
+                    for ((element, there), slot) in
+                        line.iter().zip(&source[from..row]).zip(&mut target[from..row])
+                    {
+                        sum += *element * *there;
+                        *slot += element.conjugate() * here;
                     }
+                    target[row] += sum + line[row - from] * here;
                 }
                 out
             }

@@ -200,6 +200,62 @@ pub fn isolated<T: Scalar>(
     Ok((pair, gap))
 }
 
+/// The levels of a band from nearby states, where `window` is known to hold exactly as many
+/// levels as there are states, numbered from `first`; `None` if that did not find them.
+///
+/// # Errors
+/// If a matrix element is not finite.
+pub fn within<T: Scalar>(
+    matrix: &Hermitian<T>,
+    first: usize,
+    guesses: &[State<T>],
+    window: (f64, f64),
+) -> Result<Option<Vec<Eigenpair<T>>>> {
+    match matrix {
+        Hermitian::Banded(band) => Ok(Ladder::new(band)?.within(first, guesses, window)),
+        _ => Ok(None),
+    }
+}
+
+/// The reduced resolvent of a band at one energy, for several right-hand sides.
+pub struct Resolvent<'a, T: Scalar> {
+    pencil: Pencil<'a, T>,
+    factor: BandFactor<T>,
+    energy: f64,
+}
+
+impl<'a, T: Scalar> Resolvent<'a, T> {
+    /// Factors a band; `None` for other matrices.
+    ///
+    /// # Errors
+    /// If a matrix element is not finite.
+    pub fn new(matrix: &'a Hermitian<T>, energy: f64) -> Result<Option<Self>> {
+        let Hermitian::Banded(band) = matrix else { return Ok(None) };
+        let pencil = Pencil::new(band)?;
+        let factor = pencil.factor(energy);
+        Ok(Some(Self { pencil, factor, energy }))
+    }
+
+    /// As [`reduced_solve`].
+    #[must_use]
+    pub fn solve(&self, model_space: &[State<T>], right: &State<T>) -> State<T> {
+        self.pencil.reduced(&self.factor, self.energy, model_space, right)
+    }
+}
+
+/// The level of a band with this number and a lower bound of its distance from the others, 0
+/// if that is hardly any; `None` for other matrices.
+///
+/// # Errors
+/// As [`eigenpair`].
+pub fn alone<T: Scalar>(matrix: &Hermitian<T>, number: usize) -> Result<Option<(Eigenpair<T>, f64)>> {
+    let Hermitian::Banded(band) = matrix else { return Ok(None) };
+    let mut ladder = Ladder::new(band)?;
+    let pair = ladder.level(number, &[])?;
+    let gap = ladder.apart(&pair);
+    Ok(Some((pair, gap)))
+}
+
 /// The reduced resolvent: the solution of `(H - energy) x = right` orthogonal
 /// to `model_space`, the part of `right` inside `model_space` being removed
 /// first. `model_space` holds orthonormal eigenvectors of `H` and includes every
@@ -213,8 +269,8 @@ pub fn reduced_solve<T: Scalar>(
     model_space: &[State<T>],
     right: &State<T>,
 ) -> Result<State<T>> {
-    if let Hermitian::Banded(band) = matrix {
-        return Ok(Ladder::new(band)?.reduced(energy, model_space, right));
+    if let Some(resolvent) = Resolvent::new(matrix, energy)? {
+        return Ok(resolvent.solve(model_space, right));
     }
     let mut clean = right.clone();
     let project = |state: &mut State<T>| {

@@ -10,6 +10,7 @@ mod formula;
 mod settle;
 mod sum;
 
+use std::cell::RefCell;
 use std::rc::Rc;
 
 pub use settle::{Purpose, Settled};
@@ -17,7 +18,7 @@ pub use sum::{LevelTerm, Sum};
 
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::emit::{self, Source};
-use crate::outcome::{ControlOutcome, FormulaOutcome, Outcome, ValueKind};
+use crate::outcome::{ControlOutcome, FormulaOutcome, Outcome, Valid, ValueKind};
 use crate::range;
 use crate::spec::{Formula, LevelRef, Spec, Target, TermKind};
 
@@ -59,7 +60,7 @@ pub fn solve(spec: &Spec) -> Result<Outcome> {
 /// # Errors
 /// As [`run`], but for what only ranges show.
 pub fn series(spec: &Spec) -> Result<Vec<[f64; 5]>> {
-    let mut cache = Cache::new(spec);
+    let mut cache = Cache::new(spec, false);
     spec.formulas.iter().map(|formula| Ok(cache.sum(formula, 0)?.series)).collect()
 }
 
@@ -74,7 +75,7 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
         ));
     }
     let at = spec.control.at;
-    let mut cache = Cache::new(spec);
+    let mut cache = Cache::new(spec, true);
     let mut first = vec![0; spec.formulas.len()];
     for round in 0..ROUNDS {
         let mut sums = Vec::with_capacity(spec.formulas.len());
@@ -143,11 +144,20 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
         let mut outcome = outcome(spec, measured.iter().map(|one| one.outcome.clone()).collect());
         let mut sources = Vec::new();
         if emitting {
+            // Rust and C in one number format ask for the same range.
+            let known: RefCell<Vec<(usize, f64, Valid)>> = RefCell::default();
             sources = emit::outputs(
                 spec,
                 &mut outcome,
                 &|idx, rounding| {
-                    measured[idx].own_range(spec, &spec.formulas[idx], &followed[idx], &doubts[idx], rounding)
+                    let found = known.borrow().iter().find(|one| (one.0, one.1) == (idx, rounding)).cloned();
+                    if let Some((_, _, valid)) = found {
+                        return Ok(valid);
+                    }
+                    let (one, formula) = (&measured[idx], &spec.formulas[idx]);
+                    let valid = one.own_range(spec, formula, &followed[idx], &doubts[idx], rounding)?;
+                    known.borrow_mut().push((idx, rounding, valid.clone()));
+                    Ok(valid)
                 },
                 &emit::circuit::print,
             )?;
@@ -203,11 +213,12 @@ struct Entry {
 pub(crate) struct Cache<'a> {
     spec: &'a Spec,
     entries: Vec<Entry>,
+    listed: bool,
 }
 
 impl<'a> Cache<'a> {
-    fn new(spec: &'a Spec) -> Self {
-        Self { spec, entries: Vec::new() }
+    fn new(spec: &'a Spec, listed: bool) -> Self {
+        Self { spec, entries: Vec::new(), listed }
     }
 
     /// The levels and known terms of a formula, added up.
@@ -265,6 +276,7 @@ impl<'a> Cache<'a> {
             reach: reach(self.spec),
             highest_level: self.highest_level(reference),
             order,
+            listed: self.listed,
         };
         let settled = Rc::new(settle::settle(system, reference, purpose, first)?);
         self.entries.push(Entry {

@@ -41,6 +41,8 @@ pub struct Purpose {
     pub highest_level: usize,
     /// Highest power that a formula uses.
     pub order: usize,
+    /// True if contributions, mixing and neighbouring levels are wanted too.
+    pub listed: bool,
 }
 
 /// A settled level.
@@ -80,8 +82,17 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
         )
         .map_err(|error| locate(error, level))
     };
+    let full = |built: &Built| {
+        let solve = if purpose.listed { series::solve } else { series::coefficients };
+        solve(built, level.level).map_err(|e| locate(e, level))
+    };
     let mut coarse_built = build(first)?;
-    let mut coarse = series::solve(&coarse_built, level.level).map_err(|e| locate(e, level))?;
+    // Of the coarser model only the series counts.
+    let mut coarse = if coarse_built.refinable {
+        series::coefficients(&coarse_built, level.level).map_err(|e| locate(e, level))?
+    } else {
+        full(&coarse_built)?
+    };
     if !coarse_built.refinable {
         let uncertainty = *coarse.uncertainty();
         return Ok(Settled {
@@ -97,7 +108,7 @@ pub fn settle(system: &System, level: &LevelRef, purpose: Purpose, first: usize)
     loop {
         refinement += 1;
         let built = build(refinement)?;
-        let fine = series::solve(&built, level.level).map_err(|e| locate(e, level))?;
+        let fine = full(&built)?;
         let (old, new) = (coarse.energies(), fine.energies());
         let mut uncertainty = *fine.uncertainty();
         for power in 0..uncertainty.len() {

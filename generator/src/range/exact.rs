@@ -1,7 +1,7 @@
 //! Exact solves: the lowest levels at one control value, with their changes.
 
 use crate::diagnostic::{Error, Result};
-use crate::pencil::{Eigenpair, Hermitian, Scalar, State, factor, isolated, lowest};
+use crate::pencil::{Eigenpair, Hermitian, Scalar, State, factor, isolated, lowest, within};
 use crate::series::Level;
 
 /// Consecutive levels of the block at one control value.
@@ -23,22 +23,51 @@ pub(super) fn solve<T: Scalar>(level: &Level<T>, x: f64, number: usize) -> Resul
 }
 
 /// The levels `low..=high` at `x`, from nearby states in the same order: where the matrix
-/// is a band, each costs a few factorisations.
+/// is a band, each costs a few factorisations. `window` holds these levels and no other,
+/// where that is known.
 pub(super) fn solve_near<T: Scalar>(
     level: &Level<T>,
     x: f64,
     (low, high): (usize, usize),
     guesses: &[State<T>],
+    window: Option<(f64, f64)>,
 ) -> Result<Solved<T>> {
     let matrix = level.model.hamiltonian(x);
     if !matches!(matrix, Hermitian::Banded(_)) || guesses.len() != high + 1 - low {
         return solve(level, x, high);
+    }
+    if let Some(window) = window
+        && let Some(pairs) = within(&matrix, low, guesses, window)?
+    {
+        return Ok(Solved { pairs, below: low - 1 });
     }
     let pairs = (low..=high)
         .zip(guesses)
         .map(|(number, guess)| isolated(&matrix, number, guess, None).map(|found| found.0))
         .collect::<Result<Vec<_>>>()?;
     Ok(Solved { pairs, below: low - 1 })
+}
+
+/// The energies at `x` between which the levels `low..=high` lie and no other: no level moves
+/// by more than the change of the Hamiltonian does (Weyl's inequality). `None` where that
+/// change is not diagonal, so that its bounds cost as much as a solve, or is too large.
+pub(super) fn window<T: Scalar>(
+    level: &Level<T>,
+    (here, solved): (&Hermitian<T>, &Solved<T>),
+    x: f64,
+    (low, high): (usize, usize),
+) -> Option<(f64, f64)> {
+    let (Hermitian::Diagonal(before), Hermitian::Diagonal(after)) = (here, level.model.change(x)) else {
+        return None;
+    };
+    let (mut least, mut most) = (f64::INFINITY, f64::NEG_INFINITY);
+    for (before, after) in before.iter().zip(&after) {
+        least = least.min(after - before);
+        most = most.max(after - before);
+    }
+    let window = (solved.energy(low.checked_sub(1)?) + most, solved.energy(high + 1) + least);
+    let own = (solved.energy(low) + least, solved.energy(high) + most);
+    (window.0 < own.0 && own.1 < window.1).then_some(window)
 }
 
 /// How many levels lie below each of two energies at `x`.
@@ -53,8 +82,7 @@ pub(super) fn counts<T: Scalar>(level: &Level<T>, x: f64, energies: [f64; 2]) ->
 
 /// True if the Hamiltonian is finite at `x`.
 pub(super) fn defined<T: Scalar>(level: &Level<T>, x: f64) -> bool {
-    let (low, high) = level.model.hamiltonian(x).bounds();
-    low.is_finite() && high.is_finite()
+    level.model.hamiltonian(x).is_finite()
 }
 
 impl<T: Scalar> Solved<T> {

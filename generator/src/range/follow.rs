@@ -12,7 +12,7 @@
 //! branch is carried by overlap from sample to sample, and noted as such.
 
 use super::crossing::{Crossing, crossing};
-use super::exact::{Solved, defined, solve, solve_near};
+use super::exact::{Solved, defined, solve, solve_near, window};
 use super::interpolant::{Interpolant, Kind, Piece, chebyshev_points, degree, ellipse};
 use crate::diagnostic::{Error, Result};
 use crate::model::HIGHEST_POWER;
@@ -76,6 +76,25 @@ impl Side {
         Self { pieces: Vec::new(), crossings: Vec::new(), end: at, last: (1, 1), stop: Stop::Reached }
     }
 
+    /// The same side reflected by `image`.
+    pub fn image(&self, image: &dyn Fn(f64) -> f64) -> Self {
+        Self {
+            pieces: self.pieces.iter().map(|piece| piece.image(image)).collect(),
+            crossings: self
+                .crossings
+                .iter()
+                .map(|one| Crossing {
+                    x: image(one.x),
+                    window: (image(one.window.0), image(one.window.1)),
+                    ..*one
+                })
+                .collect(),
+            end: image(self.end),
+            last: self.last,
+            stop: self.stop,
+        }
+    }
+
     /// The piece that holds `x`.
     fn piece(&self, x: f64) -> Option<&Piece> {
         self.pieces.iter().find(|piece| x >= piece.from.min(piece.to) && x <= piece.from.max(piece.to))
@@ -105,7 +124,7 @@ impl Side {
             Some(piece) => self.numbers_on(piece, x),
         };
         let guess = if numbers.0 == numbers.1 { vec![level.state.clone()] } else { Vec::new() };
-        Ok((numbers, solve_near(level, x, numbers, &guess)?.change(level, x, numbers)?))
+        Ok((numbers, solve_near(level, x, numbers, &guess, None)?.change(level, x, numbers)?))
     }
 
     fn numbers_on(&self, piece: &Piece, x: f64) -> (usize, usize) {
@@ -298,16 +317,19 @@ impl<T: Scalar> Walk<'_, T> {
         (from, to): (f64, f64),
         degree: usize,
         set: (usize, usize),
-        mut guesses: Vec<State<T>>,
+        start: Option<&Solved<T>>,
     ) -> Result<Option<Nodes<T>>> {
         let nodes = chebyshev_points(from, to, degree);
         if (to - from).abs() < NARROWEST * self.span || nodes.iter().any(|&x| !defined(self.level, x)) {
             self.side.stop = Stop::Undefined;
             return Ok(None);
         }
+        let mut guesses = start.map_or(Ok(Vec::new()), |start| start.states(set))?;
+        let here = self.level.model.change(from);
         let mut solved = Vec::with_capacity(nodes.len());
         for &x in &nodes {
-            let one = solve_near(self.level, x, set, &guesses)?;
+            let alone = start.and_then(|start| window(self.level, (&here, start), x, set));
+            let one = solve_near(self.level, x, set, &guesses, alone)?;
             guesses = one.states(set)?;
             solved.push(one);
         }
@@ -321,7 +343,7 @@ impl<T: Scalar> Walk<'_, T> {
         let size = if gap.is_finite() { 0.5 * gap } else { 0.0 };
         let (degree, bound) = degree(size, rho, self.task.accuracy, HIGHEST_DEGREE.0);
         let numbers = self.numbers;
-        let Some((nodes, solved)) = self.nodes((here, to), degree, numbers, solved.states(numbers)?)? else {
+        let Some((nodes, solved)) = self.nodes((here, to), degree, numbers, Some(solved))? else {
             return Ok(());
         };
         let mut values = Vec::with_capacity(nodes.len());
@@ -364,7 +386,7 @@ impl<T: Scalar> Walk<'_, T> {
         let (mean_degree, _) = degree(size, rho, self.task.accuracy, HIGHEST_DEGREE.1);
         let degree = square_degree.max(mean_degree);
         let mean_bound = 4.0 * size / (rho - 1.0) * libm::pow(rho, -(degree as f64));
-        let Some((nodes, solved)) = self.nodes((here, to), degree, set, solved.states(set)?)? else {
+        let Some((nodes, solved)) = self.nodes((here, to), degree, set, Some(solved))? else {
             return Ok(());
         };
         let pivot = degenerate.then_some(self.at);
@@ -466,7 +488,7 @@ impl<T: Scalar> Walk<'_, T> {
     fn branch(&mut self, here: f64, r: f64, set: (usize, usize)) -> Result<()> {
         let mut to = self.outer(here, 0.5 * r);
         while (to - here).abs() > NARROWEST * self.span {
-            let Some((nodes, solved)) = self.nodes((here, to), BRANCH_DEGREE, set, Vec::new())? else {
+            let Some((nodes, solved)) = self.nodes((here, to), BRANCH_DEGREE, set, None)? else {
                 return Ok(());
             };
             if let Some((values, numbers, state)) = self.carry(&nodes, &solved, set, here == self.at)? {

@@ -6,6 +6,7 @@ use std::rc::Rc;
 use super::exact::{counts, defined, solve};
 use super::follow::{Side, Task, walk};
 use super::overlap::Pair;
+use super::view::Sampled;
 use super::{OverlapRequest, Request};
 use crate::diagnostic::Result;
 use crate::series::{AnyLevel, points};
@@ -70,6 +71,11 @@ impl Track {
         if let Some((_, _, kept)) = kept {
             return Ok(kept);
         }
+        if let Some(found) = self.mirrored(side, stays) {
+            let found = Rc::new(found);
+            self.stayed.borrow_mut().push((side, stays.to_vec(), found.clone()));
+            return Ok(found);
+        }
         let (wanted, reach) = self.reach.get(side).copied().unwrap_or_default();
         let task =
             Task { reach, wanted, accuracy: ACCURACY * self.margin / self.share, margin: self.margin, stays };
@@ -79,6 +85,23 @@ impl Track {
         });
         self.stayed.borrow_mut().push((side, stays.to_vec(), found.clone()));
         Ok(found)
+    }
+
+    /// A side that is the image of the other by symmetry: the levels of a block with a parity
+    /// are even in the offset as a set, so a level that is not degenerate at the operating point
+    /// is even all along.
+    fn mirrored(&self, side: usize, stays: &[f64]) -> Option<Side> {
+        let Target::Level(level) = &self.target else { return None };
+        let [low, high] = self.reach;
+        let image = |x: f64| self.at - (x - self.at);
+        let even = with_level!(level, level => level.set.len() == 1 && level.model.parity().is_some());
+        if !even || image(low.0) != high.0 || image(low.1) != high.1 || image(image(low.1)) != low.1 {
+            return None;
+        }
+        let there: Vec<f64> = stays.iter().map(|&x| image(x)).collect();
+        let stayed = self.stayed.borrow();
+        let other = stayed.iter().find(|one| one.0 == 1 - side && one.1 == there)?;
+        Some(other.2.image(&image))
     }
 
     /// True if an overlap is followed: where one of its levels meets another, its range ends.
@@ -123,6 +146,7 @@ pub struct Followed<'a> {
     pub(super) base: f64,
     pub(super) known_change: &'a dyn Fn(f64) -> f64,
     pub(super) tracks: Vec<Track>,
+    pub(super) sampled: RefCell<Vec<Rc<Sampled>>>,
 }
 
 /// Follows every level of a sum to `at + 2 (end of within - at)` on both sides, or to
@@ -141,7 +165,7 @@ pub fn follow<'a>(request: &Request<'a>) -> Result<Followed<'a>> {
             Track::new(term.times, term.system, target, at, within, tolerance / term.times.abs(), share)
         })
         .collect::<Result<Vec<_>>>()?;
-    Ok(Followed { at, within, tolerance, base, known_change: request.known_change, tracks })
+    Ok(Followed { at, within, tolerance, base, known_change: request.known_change, tracks, sampled: RefCell::default() })
 }
 
 /// Follows a squared overlap to `at + 2 (end of within - at)` on both sides, or to where one
@@ -156,7 +180,7 @@ pub fn follow_overlap<'a>(request: &OverlapRequest<'a>) -> Result<Followed<'a>> 
     pair.start = pair.value(at)?;
     let name = systems.join("` and `");
     let track = Track::new(1.0, &name, Target::Overlap(Box::new(pair)), at, within, tolerance, 1.0)?;
-    Ok(Followed { at, within, tolerance, base, known_change: &|_| 0.0, tracks: vec![track] })
+    Ok(Followed { at, within, tolerance, base, known_change: &|_| 0.0, tracks: vec![track], sampled: RefCell::default() })
 }
 
 impl Followed<'_> {

@@ -32,6 +32,11 @@ pub(super) struct Interpolant {
 }
 
 impl Interpolant {
+    /// The same function reflected by `image`.
+    fn image(&self, image: &dyn Fn(f64) -> f64) -> Self {
+        Self { nodes: self.nodes.iter().map(|&x| image(x)).collect(), ..self.clone() }
+    }
+
     /// Barycentric interpolation.
     pub fn value(&self, x: f64) -> f64 {
         let (mut above, mut below) = (0.0, 0.0);
@@ -122,6 +127,21 @@ pub(super) struct Piece {
 }
 
 impl Piece {
+    /// The same piece reflected by `image`.
+    pub fn image(&self, image: &dyn Fn(f64) -> f64) -> Self {
+        let kind = match &self.kind {
+            Kind::Level(level) => Kind::Level(level.image(image)),
+            Kind::Pair { low, mean, square, pivot } => Kind::Pair {
+                low: *low,
+                mean: mean.image(image),
+                square: square.image(image),
+                pivot: pivot.map(image),
+            },
+            Kind::Branch(branch, set) => Kind::Branch(branch.image(image), *set),
+        };
+        Self { from: image(self.from), to: image(self.to), numbers: self.numbers, kind }
+    }
+
     /// Half the distance of the pair, not negative, and the bound of its error.
     pub fn half_gap(square: &Interpolant, pivot: Option<f64>, x: f64) -> (f64, f64) {
         let scale = pivot.map_or(1.0, |pivot| (x - pivot).abs());

@@ -33,7 +33,7 @@ pub(super) struct Pair {
 fn envelope(level: &AnyLevel, x: f64, points: &[(f64, f64)]) -> Result<Vec<C64>> {
     with_level!(level, level => {
         let number = level.number;
-        let solved = solve_near(level, x, (number, number), std::slice::from_ref(&level.state))?;
+        let solved = solve_near(level, x, (number, number), std::slice::from_ref(&level.state), None)?;
         wave(level.model.as_ref(), &solved.get(number)?.state, points)
     })
 }
@@ -58,7 +58,7 @@ fn bound(level: &AnyLevel, x: f64) -> Result<bool> {
             return Ok(true);
         };
         let number = level.number;
-        let solved = solve_near(level, x, (number, number), std::slice::from_ref(&level.state))?;
+        let solved = solve_near(level, x, (number, number), std::slice::from_ref(&level.state), None)?;
         Ok(solved.get(number)?.energy < edge)
     })
 }

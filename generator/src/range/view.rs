@@ -9,14 +9,38 @@ use std::rc::Rc;
 use super::Candidate;
 use super::follow::Side;
 use super::followed::Followed;
-use super::interpolant::chebyshev_points;
 use crate::diagnostic::Result;
 use crate::form::{Form, horner};
 
 /// Degree at which a residual is expanded, above that of every interpolant.
 const DEGREE: usize = 40;
 /// Width, in parts of the search, below which an interval is not halved any more.
-const NARROWEST: f64 = 1e-13;
+const NARROWEST: f64 = 1e-11;
+
+/// Above the Lebesgue constant of [`DEGREE`] + 1 Chebyshev points, `1 + (2 / pi) ln 40`
+/// (Trefethen, *Approximation Theory and Approximation Practice*, theorem 15.2, from memory).
+const LEBESGUE: f64 = 3.4;
+
+/// The followed quantity at the nodes of an interval.
+#[derive(Clone, Debug)]
+pub(super) struct Sampled {
+    ends: (f64, f64),
+    nodes: Vec<f64>,
+    values: Vec<f64>,
+    /// Largest bound of the interpolants' errors.
+    doubt: f64,
+}
+
+/// [`chebyshev_points`] of the degree that residuals are expanded in.
+fn nodes(a: f64, b: f64, cosines: &[f64]) -> Vec<f64> {
+    (0..=DEGREE)
+        .map(|k| match k {
+            0 => a,
+            DEGREE => b,
+            k => 0.5 * (a + b) + 0.5 * (a - b) * cosines.get(k).copied().unwrap_or(f64::NAN),
+        })
+        .collect()
+}
 
 /// An interval around a crossing, on which one number stands for the remainder.
 #[derive(Clone, Copy, Debug)]
@@ -153,12 +177,17 @@ impl<'a> View<'a> {
 
     /// Form minus quantity: infinite where the form has no value.
     pub fn residual(&self, x: f64) -> f64 {
+        self.away(x, self.interpolated(x).map_or(f64::NAN, |found| found.0))
+    }
+
+    /// Form minus a known value of the quantity.
+    fn away(&self, x: f64, value: f64) -> f64 {
         let d = x - self.followed.at;
         let form = self.candidate.form;
         if matches!(form, Form::Paired { half_gap_squared, .. } if horner(half_gap_squared, d) < 0.0) {
             return f64::INFINITY;
         }
-        form.value(d) - self.interpolated(x).map_or(f64::NAN, |found| found.0)
+        form.value(d) - value
     }
 
     fn window(&self, x: f64) -> Option<f64> {
@@ -191,32 +220,80 @@ impl<'a> View<'a> {
         (self.candidate.numerical)(d) + (self.candidate.written)(d)
     }
 
+    /// The quantity at the nodes of an interval; kept, since every form and limit is tried
+    /// on the same intervals.
+    fn sampled(&self, a: f64, b: f64) -> Rc<Sampled> {
+        let followed = self.followed;
+        let side = followed.side(if a == followed.at { b } else { a });
+        let usual = self
+            .sides
+            .iter()
+            .zip(&followed.tracks)
+            .all(|(own, track)| Rc::ptr_eq(&own[side], &track.sides[side]));
+        if usual {
+            let kept = followed.sampled.borrow();
+            if let Some(found) = kept.iter().rev().find(|one| one.ends == (a, b)) {
+                return found.clone();
+            }
+        }
+        let nodes = nodes(a, b, &self.cosines);
+        let mut doubt = 0.0_f64;
+        let values = nodes
+            .iter()
+            .map(|&x| match self.interpolated(x) {
+                Some((value, bound)) => {
+                    doubt = doubt.max(bound);
+                    value
+                }
+                None => {
+                    doubt = f64::INFINITY;
+                    f64::NAN
+                }
+            })
+            .collect();
+        let found = Rc::new(Sampled { ends: (a, b), nodes, values, doubt });
+        if usual {
+            followed.sampled.borrow_mut().push(found.clone());
+        }
+        found
+    }
+
     /// True if the whole error is proved to be at most `limit` from `a` to `b`.
     fn holds(&self, rounding: f64, limit: f64, a: f64, b: f64) -> bool {
-        let nodes = chebyshev_points(a, b, DEGREE);
-        let other = nodes.iter().map(|&x| self.extra(x)).fold(0.0, f64::max) + rounding;
+        let sampled = self.sampled(a, b);
+        let other = sampled.nodes.iter().map(|&x| self.extra(x)).fold(0.0, f64::max) + rounding;
         if let Some(remainder) = self.window(0.5 * (a + b)) {
             return remainder + other <= limit;
         }
-        let values: Vec<f64> = nodes.iter().map(|&x| self.residual(x)).collect();
-        let doubt = nodes
-            .iter()
-            .map(|&x| self.interpolated(x).map_or(f64::INFINITY, |one| one.1))
-            .fold(0.0, f64::max);
+        let residuals: Vec<f64> =
+            sampled.nodes.iter().zip(&sampled.values).map(|(&x, &value)| self.away(x, value)).collect();
+        let largest = residuals.iter().fold(0.0, |most: f64, one| most.max(one.abs()));
+        let room = limit - other - sampled.doubt;
+        // A sample outside decides; so do samples far inside, by the Lebesgue constant.
+        if largest > room || residuals.iter().any(|one| one.is_nan()) || room.is_nan() {
+            return false;
+        }
+        if LEBESGUE * largest <= room {
+            return true;
+        }
         let mut sum = 0.0;
         for order in 0..=DEGREE {
             let mut coefficient = 0.0;
-            for (k, value) in values.iter().enumerate() {
+            let mut turn = 0;
+            for (k, value) in residuals.iter().enumerate() {
                 let half = if k == 0 || k == DEGREE { 0.5 } else { 1.0 };
-                let cosine = self.cosines.get(order * k % (2 * DEGREE)).copied().unwrap_or(f64::NAN);
-                coefficient += half * value * cosine;
+                coefficient += half * value * self.cosines[turn];
+                turn += order;
+                if turn >= 2 * DEGREE {
+                    turn -= 2 * DEGREE;
+                }
             }
             let half = if order == 0 || order == DEGREE { 0.5 } else { 1.0 };
             // The tail of a form that is no polynomial is as large as its last terms.
             let tail = if order + 2 > DEGREE { 2.0 } else { 1.0 };
             sum += tail * half * coefficient.abs() * 2.0 / DEGREE as f64;
         }
-        sum + other + doubt <= limit
+        sum <= room
     }
 
     /// First control value from the operating point towards `to` beyond which `limit` is not kept.

@@ -14,7 +14,7 @@ use super::{AnyLevel, Level, share};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::model::{AnyModel, Built, HIGHEST_POWER, Model};
 use crate::outcome::Note;
-use crate::pencil::{Eigenpair, Hermitian, Scalar, State, lowest, reduced_solve, spectrum};
+use crate::pencil::{Eigenpair, Hermitian, Resolvent, Scalar, State, alone, lowest, reduced_solve, spectrum};
 
 /// Levels that the record lists.
 pub(super) const LISTED: usize = 12;
@@ -43,10 +43,32 @@ pub(super) const SAFETY: f64 = 4.0;
 /// `no-such-level` (spec) beyond the number of states; `near-degenerate`
 /// (accuracy) if a neighbour is too close to decide whether it is degenerate.
 pub fn solve(built: &Built, number: usize) -> Result<AnyLevel> {
+    any(built, number, Detail::Full)
+}
+
+/// [`solve`] without the other states: no contributions, no mixing, no list of levels, and
+/// no second way of summing.
+///
+/// # Errors
+/// As [`solve`].
+pub fn coefficients(built: &Built, number: usize) -> Result<AnyLevel> {
+    any(built, number, Detail::Coefficients)
+}
+
+/// How much of a level is asked for.
+#[derive(Clone, Copy, Debug, PartialEq)]
+enum Detail {
+    /// Everything.
+    Full,
+    /// Its own series.
+    Coefficients,
+}
+
+fn any(built: &Built, number: usize, detail: Detail) -> Result<AnyLevel> {
     let own = built.number(number)?;
     Ok(match &built.model {
-        AnyModel::Real(model) => AnyLevel::Real(Box::new(within(built, level(model, own)?))),
-        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(within(built, level(model, own)?))),
+        AnyModel::Real(model) => AnyLevel::Real(Box::new(within(built, detailed(model, own, detail)?))),
+        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(within(built, detailed(model, own, detail)?))),
     })
 }
 
@@ -63,7 +85,18 @@ fn within<T: Scalar>(built: &Built, mut level: Level<T>) -> Level<T> {
 /// # Errors
 /// As [`solve`].
 pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level<T>> {
-    let found = Set::find(model.as_ref(), number)?;
+    detailed(model, number, Detail::Full)
+}
+
+fn detailed<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, detail: Detail) -> Result<Level<T>> {
+    let (found, detail) = match detail {
+        Detail::Full => (None, detail),
+        Detail::Coefficients => (Set::alone(model.as_ref(), number)?, detail),
+    };
+    let (found, detail) = match found {
+        Some(found) => (found, detail),
+        None => (Set::find(model.as_ref(), number)?, Detail::Full),
+    };
     let series = found.series(model.as_ref())?;
     let branches = branches(&series)?;
     let idx = number - 1 - found.first;
@@ -114,8 +147,12 @@ pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level
         // Orders up to the highest power of the expansion; a fifth power is not known here.
         zero[1..=HIGHEST_POWER].fill(Some("the control does not act on this system".into()));
     }
-    let direct = inner(&state, &model.expansion(2).apply(&state)).real();
-    let shared = share::share(model.as_ref(), &found, &state, energies[2], direct)?;
+    let shared = if detail == Detail::Full {
+        let direct = inner(&state, &model.expansion(2).apply(&state)).real();
+        share::share(model.as_ref(), &found, &state, energies[2], direct)?
+    } else {
+        share::Shared::default()
+    };
     doubt[2] = doubt[2].max(shared.disagreement);
     terms[2] = terms[2].max(shared.largest_term);
 
@@ -158,6 +195,20 @@ pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level
     })
 }
 
+/// Common energy of the states of a set and its estimated error.
+fn common<T: Scalar>(model: &dyn Model<T>, states: &[State<T>], gap: f64) -> (f64, f64) {
+    let found: Vec<f64> = states.iter().map(|state| model.energy(model.at(), state)).collect();
+    let energy = found.iter().fold(0.0, |sum, e| sum + e) / found.len() as f64;
+    let mut doubt = 2.0 * f64::EPSILON * energy.abs();
+    for (state, e) in states.iter().zip(&found) {
+        let mut rest = model.expansion(0).apply(state);
+        doubt = doubt.max(2.0 * f64::EPSILON * bulk(state, &rest));
+        rest.axpy(T::from_real(-energy), state, T::one());
+        doubt = doubt.max((e - energy).abs()).max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
+    }
+    (energy, doubt)
+}
+
 fn turn<T: Scalar>(state: &mut State<T>, phase: Option<T>) {
     if let Some(phase) = phase {
         state.iter_mut().for_each(|x| *x *= phase);
@@ -189,6 +240,22 @@ impl<T: Scalar> Set<T> {
             return Err(near_degenerate(number, found.gap, model.degeneracy_scale()));
         }
         Ok(found)
+    }
+
+    /// A level of a band that is clearly alone, without its neighbours; `None` if it has to be
+    /// looked at more closely.
+    fn alone(model: &dyn Model<T>, number: usize) -> Result<Option<Self>> {
+        let matrix = model.expansion(0);
+        if number == 0 || number > matrix.order() {
+            return Ok(None);
+        }
+        let Some((pair, gap)) = alone(matrix, number)? else { return Ok(None) };
+        if gap <= 2.0 * UNSURE * model.degeneracy_scale() {
+            return Ok(None);
+        }
+        let states = vec![pair.state.clone()];
+        let (energy, energy_doubt) = common(model, &states, gap);
+        Ok(Some(Self { first: number - 1, energy, energy_doubt, gap, states, lowest: vec![pair] }))
     }
 
     /// [`Set::find`] that accepts a doubtful gap to the next set: a pair is smooth
@@ -229,18 +296,8 @@ impl<T: Scalar> Set<T> {
             let below = (from > 0).then(|| pairs[from].energy - pairs[from - 1].energy);
             let above = (to < count).then(|| pairs[to].energy - pairs[to - 1].energy);
             let states: Vec<State<T>> = pairs[from..to].iter().map(|pair| pair.state.clone()).collect();
-            let found: Vec<f64> = states.iter().map(|state| model.energy(model.at(), state)).collect();
-            let energy = found.iter().fold(0.0, |sum, e| sum + e) / found.len() as f64;
-            let mut energy_doubt = 2.0 * f64::EPSILON * energy.abs();
             let gap = below.into_iter().chain(above).fold(f64::INFINITY, f64::min);
-            for (state, e) in states.iter().zip(&found) {
-                let mut rest = matrix.apply(state);
-                energy_doubt = energy_doubt.max(2.0 * f64::EPSILON * bulk(state, &rest));
-                rest.axpy(T::from_real(-energy), state, T::one());
-                energy_doubt = energy_doubt
-                    .max((e - energy).abs())
-                    .max(rest.norm_squared() / gap.max(f64::MIN_POSITIVE));
-            }
+            let (energy, energy_doubt) = common(model, &states, gap);
             return Ok(Self { first: from, energy, energy_doubt, gap, states, lowest: pairs });
         }
     }
@@ -284,7 +341,11 @@ impl<T: Scalar> Set<T> {
             reference: self.energy,
             states: &self.states,
         };
-        effective(&space, &mut |_, right| self.resolve(matrix, self.energy, &self.states, right))
+        let resolvent = if self.lowest.len() < matrix.order() { Resolvent::new(matrix, self.energy)? } else { None };
+        effective(&space, &mut |_, right| match &resolvent {
+            Some(resolvent) => Ok(resolvent.solve(&self.states, right)),
+            None => self.resolve(matrix, self.energy, &self.states, right),
+        })
     }
 }
 

@@ -27,7 +27,7 @@ mod trial;
 use std::rc::Rc;
 
 pub use continued::continued;
-pub use level::{level, solve};
+pub use level::{coefficients, level, solve};
 pub use overlap::{OverlapSeries, overlap, points, squared_overlap, wave};
 pub use pair::{pair, pair_of};
 

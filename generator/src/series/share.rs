@@ -28,6 +28,7 @@ const CUT: f64 = 0.01;
 const NOISE: f64 = 1e-14;
 
 /// What [`share`] finds.
+#[derive(Default)]
 pub(super) struct Shared {
     pub contributions: Vec<Contribution>,
     pub mixing: Vec<Mixing>,

@@ -203,13 +203,7 @@ impl Stack {
                 if power == 0 { stack.hamiltonian(request.at) } else { stack.coefficient(request.at, power) }
             })
             .collect();
-        let finite = |h: &Hermitian<f64>| match h {
-            Hermitian::Zero(_) => true,
-            Hermitian::Diagonal(entries) => entries.iter().all(|x| x.is_finite()),
-            Hermitian::Banded(band) => band.entries.iter().all(|x| x.is_finite()),
-            Hermitian::Dense(matrix) => matrix.iter().all(|x| x.is_finite()),
-        };
-        if !stack.expansion.iter().all(finite) {
+        if !stack.expansion.iter().all(Hermitian::is_finite) {
             return Err(Error::spec(
                 Diagnostic::new(
                     "undefined",
