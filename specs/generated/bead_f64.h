@@ -5,7 +5,7 @@
  *   ground = c0 + d*(c1 + d*c2), d = F
  *   c0 = 213.38890934099626      +- 3.8e-13          meV
  *   c1 = 0                       exact, by symmetry  meV/(kV/cm)
- *   c2 = -0.0000705962255856999  +- 9.7e-18          meV/(kV/cm)^2
+ *   c2 = -0.0000705962255856997  +- 1.1e-17          meV/(kV/cm)^2
  *   range: -200.0 to 200.0 kV/cm; it ends below for the reason `within` (as far as was
  *     asked), above for `within` (as far as was asked)
  *   largest error inside: 0.012 meV (tolerance 0.2): remainder 0.012, numerical 2.6e-10,
@@ -55,7 +55,7 @@
 /* Coefficient of d^1, in meV/(kV/cm). */
 #define BEAD_F64_GROUND_C1 (0.0)
 /* Coefficient of d^2, in meV/(kV/cm)^2. */
-#define BEAD_F64_GROUND_C2 (-0.0000705962255856999)
+#define BEAD_F64_GROUND_C2 (-0.0000705962255856997)
 
 #ifdef __cplusplus
 extern "C" {

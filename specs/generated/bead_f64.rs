@@ -4,7 +4,7 @@
 //   ground = c0 + d*(c1 + d*c2), d = F
 //   c0 = 213.38890934099626      +- 3.8e-13          meV
 //   c1 = 0                       exact, by symmetry  meV/(kV/cm)
-//   c2 = -0.0000705962255856999  +- 9.7e-18          meV/(kV/cm)^2
+//   c2 = -0.0000705962255856997  +- 1.1e-17          meV/(kV/cm)^2
 //   range: -200.0 to 200.0 kV/cm; it ends below for the reason `within` (as far as was
 //     asked), above for `within` (as far as was asked)
 //   largest error inside: 0.012 meV (tolerance 0.2): remainder 0.012, numerical 2.6e-10,
@@ -72,7 +72,7 @@ pub mod ground {
     pub const ROUNDING: f64 = 1.4606371682331088e-14;
 
     /// Coefficients by rising power of the offset, in `meV`, `meV/(kV/cm)`, `meV/(kV/cm)^2`.
-    pub const COEFFICIENTS: [f64; 3] = [213.38890934099626, 0.0, -0.0000705962255856999];
+    pub const COEFFICIENTS: [f64; 3] = [213.38890934099626, 0.0, -0.0000705962255856997];
 
     /// The formula, no check.
     #[must_use]

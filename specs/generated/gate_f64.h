@@ -3,13 +3,13 @@
  *
  * level: level, in meV, against V, in V.
  *   level = c0 + d*(c1 + d*c2), d = V - 0.5
- *   c0 = 52.325249107938006   +- 9.3e-14          meV
- *   c1 = -0.28077982840506    +- 1.2e-12          meV/V
- *   c2 = -0.5382135701934042  +- 5.4e-14          meV/V^2
+ *   c0 = 52.325249107938    +- 2.2e-12          meV
+ *   c1 = -0.28077982840558  +- 2.9e-12          meV/V
+ *   c2 = -0.53821357019338  +- 4.6e-13          meV/V^2
  *   range: -1.0 to 1.3 V; it ends below for the reason `within` (as far as was asked),
  *     above for `within` (as far as was asked)
  *   largest error inside: 0.013 meV (tolerance 0.05): remainder 0.013, numerical 1.1e-11,
- *     written digits 3.2e-15, rounding 3.9e-15
+ *     written digits 8.5e-15, rounding 3.9e-15
  *   inverse: gives the value back within 1.1e-14 meV
  *
  * Evaluated as c0 + d*(c1 + d*c2) with one rounding per operation and no fused
@@ -45,17 +45,17 @@
 /* Operating point, in V. */
 #define GATE_F64_LEVEL_AT (0.5)
 /* Level at the operating point, in meV, a double. */
-#define GATE_F64_LEVEL_E0 (52.325249107938006)
+#define GATE_F64_LEVEL_E0 (52.325249107938)
 /* Bound on the rounding of the value, in meV. */
-#define GATE_F64_LEVEL_ROUNDING (3.922846593952147e-15)
+#define GATE_F64_LEVEL_ROUNDING (3.922846593952081e-15)
 /* Coefficient of d^0, in meV. */
-#define GATE_F64_LEVEL_C0 (52.325249107938006)
+#define GATE_F64_LEVEL_C0 (52.325249107938)
 /* Coefficient of d^1, in meV/V. */
-#define GATE_F64_LEVEL_C1 (-0.28077982840506)
+#define GATE_F64_LEVEL_C1 (-0.28077982840558)
 /* Coefficient of d^2, in meV/V^2. */
-#define GATE_F64_LEVEL_C2 (-0.5382135701934042)
+#define GATE_F64_LEVEL_C2 (-0.53821357019338)
 /* A zero of the slope, in V. */
-#define GATE_F64_LEVEL_CUT_1 (0.23915575158745694)
+#define GATE_F64_LEVEL_CUT_1 (0.23915575158696212)
 
 #ifdef __cplusplus
 extern "C" {

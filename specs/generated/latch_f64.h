@@ -3,39 +3,39 @@
  *
  * ground: level, in meV, against F, in kV/cm.
  *   ground = c0 + d*(c1 + d*c2), d = F - 25.0
- *   c0 = 50.40779736341857       +- 9.0e-14          meV
- *   c1 = -0.2593015656165498     +- 4.1e-14          meV/(kV/cm)
- *   c2 = -0.0005035123765810708  +- 4.1e-17          meV/(kV/cm)^2
+ *   c0 = 50.40779736341854       +- 2.3e-13          meV
+ *   c1 = -0.2593015656165505     +- 3.5e-14          meV/(kV/cm)
+ *   c2 = -0.0005035123765810669  +- 4.7e-17          meV/(kV/cm)^2
  *   range: 1.282191 to 50.39828 kV/cm; it ends below for the reason `remainder` (the
  *     formula leaves the exact level), above for `remainder` (the formula leaves the
  *     exact level)
- *   largest error inside: 0.020 meV (tolerance 0.02): remainder 0.020, numerical 5.1e-12,
+ *   largest error inside: 0.020 meV (tolerance 0.02): remainder 0.020, numerical 6.3e-12,
  *     written digits 1.5e-15, rounding 5.2e-15
  *   inverse: gives the value back within 2.0e-14 meV
  *
  * first: level, in meV, against F, in kV/cm.
  *   first = c0 + d*(c1 + d*(c2 + d*c3)), d = F - 25.0
- *   c0 = 141.22364642846352     +- 2.6e-13          meV
- *   c1 = 0.1396064232869583     +- 5.3e-14          meV/(kV/cm)
- *   c2 = -0.000613524248028231  +- 2.8e-16          meV/(kV/cm)^2
- *   c3 = -3.0219101338451e-6    +- 1.4e-18          meV/(kV/cm)^3
+ *   c0 = 141.2236464284635      +- 2.6e-13          meV
+ *   c1 = 0.1396064232869557     +- 5.1e-14          meV/(kV/cm)
+ *   c2 = -0.000613524248028219  +- 2.6e-16          meV/(kV/cm)^2
+ *   c3 = -3.02191013384507e-6   +- 1.2e-18          meV/(kV/cm)^3
  *   range: -20.0 to 67.233 kV/cm; it ends below for the reason `within` (as far as was
  *     asked), above for `remainder` (the formula leaves the exact level)
  *   largest error inside: 0.050 meV (tolerance 0.05): remainder 0.050, numerical 5.3e-6,
- *     written digits 4.8e-16, rounding 1.6e-14
+ *     written digits 3.3e-15, rounding 1.6e-14
  *   inverse: gives the value back within 3.8e-14 meV
  *
  * line: change of the level from the operating point, in THz, against F, in kV/cm.
  *   line = c0 + d*(c1 + d*c2), d = F - 25.0
- *   c0 = 0                       +- 8.3e-14          THz
- *   c1 = 0.0964555225750412      +- 2.3e-14          THz/(kV/cm)
- *   c2 = -0.0000266007521660863  +- 7.6e-17          THz/(kV/cm)^2
+ *   c0 = 0                       +- 1.2e-13          THz
+ *   c1 = 0.0964555225750408      +- 2.1e-14          THz/(kV/cm)
+ *   c2 = -0.0000266007521660842  +- 7.3e-17          THz/(kV/cm)^2
  *   level at the operating point: 21.959174605008634 THz
  *   range: -1.432374 to 51.45762 kV/cm; it ends below for the reason `remainder` (the
  *     formula leaves the exact level), above for `remainder` (the formula leaves the
  *     exact level)
  *   largest error inside: 0.020 THz (tolerance 0.02): remainder 0.020, numerical 8.0e-7,
- *     written digits 7.4e-16, rounding 8.0e-16
+ *     written digits 3.8e-16, rounding 8.0e-16
  *   inverse: gives the value back within 4.8e-15 THz
  *   note: a neighbouring level limits this polynomial; `form: paired` of the same order
  *     holds from -4.531 to 57.18 kV/cm
@@ -73,15 +73,15 @@
 /* Operating point, in kV/cm. */
 #define LATCH_F64_GROUND_AT (25.0)
 /* Level at the operating point, in meV, a double. */
-#define LATCH_F64_GROUND_E0 (50.40779736341857)
+#define LATCH_F64_GROUND_E0 (50.40779736341854)
 /* Bound on the rounding of the value, in meV. */
-#define LATCH_F64_GROUND_ROUNDING (5.229821720779652e-15)
+#define LATCH_F64_GROUND_ROUNDING (5.229821720779653e-15)
 /* Coefficient of d^0, in meV. */
-#define LATCH_F64_GROUND_C0 (50.40779736341857)
+#define LATCH_F64_GROUND_C0 (50.40779736341854)
 /* Coefficient of d^1, in meV/(kV/cm). */
-#define LATCH_F64_GROUND_C1 (-0.2593015656165498)
+#define LATCH_F64_GROUND_C1 (-0.2593015656165505)
 /* Coefficient of d^2, in meV/(kV/cm)^2. */
-#define LATCH_F64_GROUND_C2 (-0.0005035123765810708)
+#define LATCH_F64_GROUND_C2 (-0.0005035123765810669)
 
 /* Lower end of the range, in kV/cm. */
 #define LATCH_F64_FIRST_FROM (-20.0)
@@ -90,17 +90,17 @@
 /* Operating point, in kV/cm. */
 #define LATCH_F64_FIRST_AT (25.0)
 /* Level at the operating point, in meV, a double. */
-#define LATCH_F64_FIRST_E0 (141.22364642846352)
+#define LATCH_F64_FIRST_E0 (141.2236464284635)
 /* Bound on the rounding of the value, in meV. */
-#define LATCH_F64_FIRST_ROUNDING (1.611042052411619e-14)
+#define LATCH_F64_FIRST_ROUNDING (1.611042052411618e-14)
 /* Coefficient of d^0, in meV. */
-#define LATCH_F64_FIRST_C0 (141.22364642846352)
+#define LATCH_F64_FIRST_C0 (141.2236464284635)
 /* Coefficient of d^1, in meV/(kV/cm). */
-#define LATCH_F64_FIRST_C1 (0.1396064232869583)
+#define LATCH_F64_FIRST_C1 (0.1396064232869557)
 /* Coefficient of d^2, in meV/(kV/cm)^2. */
-#define LATCH_F64_FIRST_C2 (-0.000613524248028231)
+#define LATCH_F64_FIRST_C2 (-0.000613524248028219)
 /* Coefficient of d^3, in meV/(kV/cm)^3. */
-#define LATCH_F64_FIRST_C3 (-3.0219101338451e-6)
+#define LATCH_F64_FIRST_C3 (-3.02191013384507e-6)
 
 /* Lower end of the range, in kV/cm. */
 #define LATCH_F64_LINE_FROM (-1.432374)
@@ -111,13 +111,13 @@
 /* Level at the operating point, in THz, a double. */
 #define LATCH_F64_LINE_E0 (21.959174605008634)
 /* Bound on the rounding of the value, in THz. */
-#define LATCH_F64_LINE_ROUNDING (8.027709662579702e-16)
+#define LATCH_F64_LINE_ROUNDING (8.027709662579692e-16)
 /* Coefficient of d^0, in THz. */
 #define LATCH_F64_LINE_C0 (0.0)
 /* Coefficient of d^1, in THz/(kV/cm). */
-#define LATCH_F64_LINE_C1 (0.0964555225750412)
+#define LATCH_F64_LINE_C1 (0.0964555225750408)
 /* Coefficient of d^2, in THz/(kV/cm)^2. */
-#define LATCH_F64_LINE_C2 (-0.0000266007521660863)
+#define LATCH_F64_LINE_C2 (-0.0000266007521660842)
 
 #ifdef __cplusplus
 extern "C" {

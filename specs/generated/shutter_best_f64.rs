@@ -2,13 +2,13 @@
 //
 // edge: level, in meV, against F, in kV/cm.
 //   edge = c0 + d*(c1 + d*c2), d = F
-//   c0 = 34.9329359333       +- 8.4e-14          meV
+//   c0 = 34.9329359333       +- 1.2e-13          meV
 //   c1 = 0                   exact, by symmetry  meV/(kV/cm)
-//   c2 = -0.000542580794673  +- 8.7e-17          meV/(kV/cm)^2
+//   c2 = -0.000542580794673  +- 8.9e-17          meV/(kV/cm)^2
 //   range: -60.0 to 60.0 kV/cm; it ends below for the reason `within` (as far as was
 //     asked), above for `within` (as far as was asked)
 //   largest error inside: 0.0015 meV (tolerance 0.01): remainder 0.0015, numerical
-//     2.0e-12, written digits 2.4e-11, rounding 3.9e-15
+//     1.6e-12, written digits 2.4e-11, rounding 3.9e-15
 //   inverse: gives the value back within 1.3e-14 meV
 //   note: the odd coefficients vanish by symmetry (electron: the stack is its own mirror
 //     image about its middle and the field is odd in the offset)
@@ -68,7 +68,7 @@ pub mod edge {
     pub const AT: f64 = 0.0;
 
     /// Level at the operating point, in meV.
-    pub const E0: f64 = 34.93440810453128;
+    pub const E0: f64 = 34.934408104531286;
 
     /// Bound on the rounding of [`value`], in meV.
     pub const ROUNDING: f64 = 3.871902802252136e-15;

@@ -3,13 +3,13 @@
  *
  * onset: level, in meV, against F, in kV/cm.
  *   onset = c0 + d*(c1 + d*c2), d = F
- *   c0 = 1464.947383431635      +- 3.3e-13          meV
+ *   c0 = 1464.9473834316352     +- 3.3e-13          meV
  *   c1 = 0                      exact, by symmetry  meV/(kV/cm)
- *   c2 = -0.002306605322367533  +- 1.9e-16          meV/(kV/cm)^2
+ *   c2 = -0.002306605322367515  +- 1.1e-16          meV/(kV/cm)^2
  *   range: -47.46746 to 47.46746 kV/cm; it ends below for the reason `remainder` (the
  *     formula leaves the exact level), above for `remainder` (the formula leaves the
  *     exact level)
- *   largest error inside: 0.25 meV (tolerance 0.25): remainder 0.25, numerical 2.2e-12,
+ *   largest error inside: 0.25 meV (tolerance 0.25): remainder 0.25, numerical 9.0e-13,
  *     written digits 9.8e-16, rounding 1.1e-13
  *   inverse: gives the value back within 2.5e-13 meV
  *   note: the odd coefficients vanish by symmetry (electron: the stack is its own mirror
@@ -20,12 +20,12 @@
  *   forbidden = c0 + d*(c1 + d*c2), d = F
  *   c0 = 1490.387625773096      +- 3.4e-13          meV
  *   c1 = 0                      exact, by symmetry  meV/(kV/cm)
- *   c2 = -0.000234027894275951  +- 2.7e-16          meV/(kV/cm)^2
+ *   c2 = -0.000234027894275994  +- 1.2e-16          meV/(kV/cm)^2
  *   range: -48.25356 to 48.25356 kV/cm; it ends below for the reason `remainder` (the
  *     formula leaves the exact level), above for `remainder` (the formula leaves the
  *     exact level)
- *   largest error inside: 0.25 meV (tolerance 0.25): remainder 0.25, numerical 1.2e-12,
- *     written digits 6.4e-17, rounding 1.1e-13
+ *   largest error inside: 0.25 meV (tolerance 0.25): remainder 0.25, numerical 9.5e-13,
+ *     written digits 0, rounding 1.1e-13
  *   inverse: gives the value back within 2.3e-13 meV
  *   note: the odd coefficients vanish by symmetry (electron: the stack is its own mirror
  *     image about its middle and the field is odd in the offset; hole: the stack is

@@ -324,13 +324,22 @@ impl<T: Scalar> Walk<'_, T> {
             self.side.stop = Stop::Undefined;
             return Ok(None);
         }
+        let mut last: Option<(f64, Vec<State<T>>)> = None;
         let mut guesses = start.map_or(Ok(Vec::new()), |start| start.states(set))?;
         let here = self.level.model.change(from);
         let mut solved = Vec::with_capacity(nodes.len());
-        for &x in &nodes {
+        for (&x, &next) in nodes.iter().zip(nodes.iter().skip(1).chain([&to])) {
             let alone = start.and_then(|start| window(self.level, (&here, start), x, set));
             let one = solve_near(self.level, x, set, &guesses, alone)?;
-            guesses = one.states(set)?;
+            let states = one.states(set)?;
+            guesses = match &last {
+                Some((before, old)) if alone.is_some() => {
+                    let step = (next - x) / (x - before);
+                    states.iter().zip(old).map(|(new, old)| extrapolated(old, new, step)).collect()
+                }
+                _ => states.clone(),
+            };
+            last = Some((x, states));
             solved.push(one);
         }
         Ok(Some((nodes, solved)))
@@ -580,6 +589,19 @@ impl<T: Scalar> Walk<'_, T> {
             self.side.stop = Stop::Escape;
         }
         self.side.pieces.push(piece);
+    }
+}
+
+/// A guess `step` beyond `new`, in units of its distance from `old`; phases are arbitrary.
+fn extrapolated<T: Scalar>(old: &State<T>, new: &State<T>, step: f64) -> State<T> {
+    let overlap = old.dotc(new);
+    let size = overlap.modulus();
+    let mut guess = new.scale(1.0 + step);
+    if size > 0.0 {
+        guess.axpy(-overlap.unscale(size).scale(step), old, T::one());
+        guess
+    } else {
+        new.clone()
     }
 }
 

@@ -18,7 +18,7 @@ const DEGREE: usize = 14;
 const OPEN_DEGREE: usize = 14;
 
 /// Wave number times length, or decay times length, that one element takes.
-const PHASE: f64 = 9.0;
+const PHASE: f64 = 12.0;
 
 /// One element on the stack.
 pub struct Piece {
