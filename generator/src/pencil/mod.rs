@@ -15,8 +15,8 @@ mod solve;
 
 pub use hermitian::{Banded, Hermitian};
 pub use solve::{
-    Eigenpair, Factor, Resolvent, alone, eigenpair, eigenpair_near, factor, isolated, lowest, reduced_solve, rough_energy,
-    spectrum, within,
+    Eigenpair, Factor, Resolvent, alone, eigenpair, eigenpair_near, factor, isolated, lowest, reduced_solve,
+    rough_energy, spectrum, within,
 };
 
 use nalgebra::{Complex, ComplexField};

@@ -165,7 +165,15 @@ pub fn follow<'a>(request: &Request<'a>) -> Result<Followed<'a>> {
             Track::new(term.times, term.system, target, at, within, tolerance / term.times.abs(), share)
         })
         .collect::<Result<Vec<_>>>()?;
-    Ok(Followed { at, within, tolerance, base, known_change: request.known_change, tracks, sampled: RefCell::default() })
+    Ok(Followed {
+        at,
+        within,
+        tolerance,
+        base,
+        known_change: request.known_change,
+        tracks,
+        sampled: RefCell::default(),
+    })
 }
 
 /// Follows a squared overlap to `at + 2 (end of within - at)` on both sides, or to where one
@@ -180,7 +188,15 @@ pub fn follow_overlap<'a>(request: &OverlapRequest<'a>) -> Result<Followed<'a>> 
     pair.start = pair.value(at)?;
     let name = systems.join("` and `");
     let track = Track::new(1.0, &name, Target::Overlap(Box::new(pair)), at, within, tolerance, 1.0)?;
-    Ok(Followed { at, within, tolerance, base, known_change: &|_| 0.0, tracks: vec![track], sampled: RefCell::default() })
+    Ok(Followed {
+        at,
+        within,
+        tolerance,
+        base,
+        known_change: &|_| 0.0,
+        tracks: vec![track],
+        sampled: RefCell::default(),
+    })
 }
 
 impl Followed<'_> {

@@ -341,7 +341,8 @@ impl<T: Scalar> Set<T> {
             reference: self.energy,
             states: &self.states,
         };
-        let resolvent = if self.lowest.len() < matrix.order() { Resolvent::new(matrix, self.energy)? } else { None };
+        let resolvent =
+            if self.lowest.len() < matrix.order() { Resolvent::new(matrix, self.energy)? } else { None };
         effective(&space, &mut |_, right| match &resolvent {
             Some(resolvent) => Ok(resolvent.solve(&self.states, right)),
             None => self.resolve(matrix, self.energy, &self.states, right),
