@@ -2,8 +2,6 @@
 
 mod calls;
 mod demo;
-mod faults;
 mod hostile;
-mod injection;
 mod schema;
 mod shells;
