@@ -263,6 +263,14 @@ pub(super) fn outcome(
         },
     };
     notes.extend(ranged.notes.iter().cloned());
+    if let (Form::Paired { partner, .. }, Some(first)) = (&proposed.written, sum.levels.first())
+        && first.settled.built.labelled
+    {
+        notes.push(Note {
+            code: "partner".into(),
+            text: format!("the partner is level {partner} among those of every l with the same m"),
+        });
+    }
     Ok(Measured {
         outcome: FormulaOutcome {
             name: formula.name.clone(),

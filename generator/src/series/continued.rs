@@ -115,3 +115,60 @@ fn start<T: Scalar>(
     }
     Some(out)
 }
+
+#[cfg(test)]
+mod tests {
+    use super::super::trial::{Trial, real};
+    use super::*;
+    use crate::series::level;
+
+    fn series(order: usize, unperturbed: &[f64], couplings: &[(usize, usize)], number: usize) -> Vec<f64> {
+        let h = vec![
+            real(order, |i, j| if i == j { unperturbed[i] } else { 0.0 }),
+            real(order, |i, j| f64::from(couplings.contains(&(i.min(j), i.max(j))))),
+        ];
+        continue_one(&level(&Trial::new(h).shared(), number).unwrap()).unwrap()
+    }
+
+    /// Two levels 0 and 1 coupled by d: `(1 - sqrt(1 + 4 d^2))/2`, whose coefficients are
+    /// the Catalan numbers with changing sign.
+    #[test]
+    fn two_levels_give_catalan_numbers() {
+        let found = series(2, &[0.0, 1.0], &[(0, 1)], 1);
+        for (power, expected) in [0.0, 0.0, -1.0, 0.0, 1.0, 0.0, -2.0, 0.0, 5.0, 0.0].into_iter().enumerate()
+        {
+            assert!((found[power] - expected).abs() < 1e-12, "{power}: {found:?}");
+        }
+    }
+
+    /// Levels 0, 0, 1 with d between the first two and between the first and the third:
+    /// `E^3 - E^2 - 2 d^2 E + d^2 = 0`, solved here power by power for the branch that starts with `E = d`.
+    #[test]
+    fn a_branch_of_a_degenerate_pair_is_continued() {
+        let found = series(3, &[0.0, 0.0, 1.0], &[(0, 1), (0, 2)], 2);
+        let mut exact = [0.0; 12];
+        exact[1] = 1.0;
+        let product = |a: &[f64; 12], b: &[f64; 12]| {
+            let mut out = [0.0; 12];
+            for (i, x) in a.iter().enumerate() {
+                for (j, y) in b.iter().enumerate().take(12 - i) {
+                    out[i + j] += x * y;
+                }
+            }
+            out
+        };
+        for power in 2..11 {
+            // The coefficient of d^(power + 1), in which the unknown stands as -2 E_power.
+            let square = product(&exact, &exact);
+            let rest = product(&square, &exact)[power + 1] - square[power + 1] - 2.0 * exact[power - 1];
+            exact[power] = 0.5 * rest;
+        }
+        assert!(found.len() == MOST, "{found:?}");
+        for (power, value) in found.iter().enumerate() {
+            assert!(
+                (value - exact[power]).abs() < 1e-11 * exact[power].abs().max(1.0),
+                "{power}: {found:?} {exact:?}"
+            );
+        }
+    }
+}

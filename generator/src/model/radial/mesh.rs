@@ -28,6 +28,9 @@ const PHASE: f64 = 9.0;
 /// terms in 1/r are smooth on the half-infinite one.
 const OUTER: f64 = 8.0;
 
+/// Degrees that an element without phase has less than a full one; empirical.
+const LEAST: usize = 7;
+
 /// Samples of the wave number over one shell, by which it is divided.
 const SAMPLES: usize = 400;
 
@@ -39,7 +42,7 @@ const SPARSE: f64 = 0.05;
 
 /// What a mesh must resolve.
 pub struct Scale<'a> {
-    /// Degree of the elements.
+    /// Degree of an element that takes the whole [`PHASE`]; one that takes less has less.
     pub degree: usize,
     /// Wave number at a radius of a shell (nm, number of the shell), 1/nm, and the rate at which
     /// the level decays there, 0 where it moves freely, 1/nm.
@@ -102,7 +105,6 @@ pub struct Mesh {
 impl Mesh {
     /// Lays elements over the shells and, for open ends, beyond them.
     pub fn new(shells: &[Layer], scale: &Scale<'_>) -> Self {
-        let inside = lobatto(scale.degree);
         let mut pieces: Vec<Piece> = Vec::new();
         let mut faces = Vec::with_capacity(shells.len());
         let mut node = 0;
@@ -120,7 +122,12 @@ impl Mesh {
         }
         let phases = Phases::new(&spans, scale.wave);
         let mut lay = |span: usize, frozen: Option<f64>, node: &mut usize| {
-            let ends = phases.cuts(span);
+            let (ends, phase) = phases.cuts(span);
+            // The element at the centre holds r^(l + 1) as well.
+            let less = if span == 0 { LEAST.min(2) } else { LEAST };
+            let fewer = libm::floor(less as f64 * (1.0 - phase / PHASE).max(0.0));
+            let degree = scale.degree.saturating_sub(fewer as usize).max(4);
+            let inside = lobatto(degree);
             let shell = spans.get(span).map_or(last, |one| one.2);
             for pair in ends.windows(2) {
                 pieces.push(Piece {
@@ -131,7 +138,7 @@ impl Mesh {
                     shell,
                     frozen,
                 });
-                *node += scale.degree;
+                *node += degree;
             }
         };
         let mut start = 0.0;
@@ -336,10 +343,10 @@ impl Phases {
         Self { spans: spans.iter().map(|&(from, to, _)| (from, to)).collect(), sums }
     }
 
-    /// Ends of elements over a span, each with the same part of its phase.
-    fn cuts(&self, span: usize) -> Vec<f64> {
+    /// Ends of elements over a span, each with the same part of its phase, and that part.
+    fn cuts(&self, span: usize) -> (Vec<f64>, f64) {
         let (Some(&(from, to)), Some(sums)) = (self.spans.get(span), self.sums.get(span)) else {
-            return Vec::new();
+            return (Vec::new(), 0.0);
         };
         let whole = sums.last().copied().unwrap_or(0.0);
         let count = libm::ceil(whole / PHASE);
@@ -357,7 +364,7 @@ impl Phases {
             out.push(s * s);
         }
         out.push(to);
-        out
+        (out, whole / count as f64)
     }
 }
 
@@ -412,7 +419,7 @@ mod tests {
     fn cuts_share_the_phase_evenly() {
         // A charge at the centre: wave number sqrt(c/r), phase 2 sqrt(c r).
         let phases = Phases::new(&[(0.0, 50.0, 0), (50.0, 60.0, 0)], &|_, r| ((25.0 / r).sqrt(), 0.0));
-        let ends = phases.cuts(0);
+        let (ends, _) = phases.cuts(0);
         assert!(ends.len() > 3 && ends.first() == Some(&0.0) && ends.last() == Some(&50.0));
         let step = 10.0 * ends[1].sqrt();
         assert!(step <= PHASE);
@@ -425,7 +432,7 @@ mod tests {
     fn nothing_is_resolved_where_the_level_is_gone() {
         let wave = |_: usize, r: f64| if r < 5.0 { (2.0, 0.0) } else { (2.0, 2.0) };
         let phases = Phases::new(&[(0.0, 100.0, 0)], &wave);
-        let ends = phases.cuts(0);
+        let (ends, _) = phases.cuts(0);
         assert!(ends.iter().filter(|&&r| r > 5.0 + 0.5 * GONE + 1.0).count() <= 2, "{ends:?}");
         assert!(ends.iter().filter(|&&r| r < 5.0 + 0.5 * GONE).count() > 4, "{ends:?}");
     }

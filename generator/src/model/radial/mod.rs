@@ -75,11 +75,7 @@ impl Sphere {
         energy: f64,
         pulled: bool,
     ) -> Result<usize> {
-        let force = [request.reach.0, request.at, request.reach.1]
-            .map(|control| (radial.charge * field_at(radial, control)).abs())
-            .into_iter()
-            .filter(|x| x.is_finite())
-            .fold(0.0, f64::max);
+        let force = strongest(radial, request);
         let mut top = self.channels.filled(from, energy)?.0.unwrap_or(from);
         if pulled {
             let lowered: Vec<f64> = self
@@ -138,7 +134,7 @@ pub fn build(system: &System, radial: &Radial, request: &Request<'_>) -> Result<
             } else if formal {
                 5
             } else if at_field == 0.0 {
-                3 + request.refinement
+                4 + request.refinement
             } else {
                 6 + 2 * request.refinement
             };
@@ -201,6 +197,17 @@ fn field_at(radial: &Radial, control: f64) -> f64 {
     radial.field.as_ref().map_or(0.0, |field| field.value(control, 0.0))
 }
 
+/// The largest force of the field over the wanted interval, which reaches half as far as
+/// exact levels may be asked for, eV/nm.
+fn strongest(radial: &Radial, request: &Request<'_>) -> f64 {
+    let half = |end: f64| request.at + 0.5 * (end - request.at);
+    [half(request.reach.0), request.at, half(request.reach.1)]
+        .map(|control| (radial.charge * field_at(radial, control)).abs())
+        .into_iter()
+        .filter(|x| x.is_finite())
+        .fold(0.0, f64::max)
+}
+
 /// The mesh fit for the level that is asked for, and that level's energy (without the field).
 fn settled_sphere(
     system: &System,
@@ -238,11 +245,7 @@ fn settled_sphere(
     }
     let number = request.level.max(1) as f64;
     let strength = radial.charge * radial.centre_charge * coulomb_ev_nm() / radial.permittivity;
-    let slope = [request.reach.0, at, request.reach.1]
-        .map(|control| (radial.charge * field_at(radial, control)).abs())
-        .into_iter()
-        .filter(|x| x.is_finite())
-        .fold(0.0, f64::max);
+    let slope = strongest(radial, request);
     // Zero n of the spherical Bessel functions of order l, and number n among all l >= m,
     // roughly and from above.
     let turns = match block.l {
