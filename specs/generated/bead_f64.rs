@@ -2,13 +2,13 @@
 //
 // ground: level, in meV, against F, in kV/cm.
 //   ground = c0 + d*(c1 + d*c2), d = F
-//   c0 = 213.38890934099626      +- 3.8e-13          meV
+//   c0 = 213.388909340996        +- 1.5e-10          meV
 //   c1 = 0                       exact, by symmetry  meV/(kV/cm)
-//   c2 = -0.0000705962255856997  +- 1.1e-17          meV/(kV/cm)^2
+//   c2 = -0.0000705962255857008  +- 5.9e-17          meV/(kV/cm)^2
 //   range: -200.0 to 200.0 kV/cm; it ends below for the reason `within` (as far as was
 //     asked), above for `within` (as far as was asked)
-//   largest error inside: 0.012 meV (tolerance 0.2): remainder 0.012, numerical 2.6e-10,
-//     written digits 0, rounding 1.5e-14
+//   largest error inside: 0.012 meV (tolerance 0.2): remainder 0.012, numerical 1.6e-10,
+//     written digits 2.6e-13, rounding 1.5e-14
 //   inverse: gives the value back within 3.7e-14 meV
 //   note: the odd coefficients vanish by symmetry (electron: the shells are their own
 //     mirror image and the field is odd in the offset)
@@ -66,13 +66,13 @@ pub mod ground {
     pub const AT: f64 = 0.0;
 
     /// Level at the operating point, in meV.
-    pub const E0: f64 = 213.38890934099626;
+    pub const E0: f64 = 213.388909340996;
 
     /// Bound on the rounding of [`value`], in meV.
     pub const ROUNDING: f64 = 1.4606371682331088e-14;
 
     /// Coefficients by rising power of the offset, in `meV`, `meV/(kV/cm)`, `meV/(kV/cm)^2`.
-    pub const COEFFICIENTS: [f64; 3] = [213.38890934099626, 0.0, -0.0000705962255856997];
+    pub const COEFFICIENTS: [f64; 3] = [213.388909340996, 0.0, -0.0000705962255857008];
 
     /// The formula, no check.
     #[must_use]
