@@ -184,24 +184,17 @@ fn polarizability_of_an_impenetrable_sphere() {
     close("share", number(part, "share"), 0.009_074_348_450_009_976 / 0.009_085_055_861_112_585, 1e-9);
 }
 
-/// A sphere of finite depth with a step of the mass: the logarithmic derivative of the
-/// radial function times 1/m is continuous (D. J. BenDaniel and C. B. Duke, Phys. Rev. 152, 683
-/// (1966)), between j_l(k r) inside and the modified spherical Bessel function outside (L. D. Landau and
-/// E. M. Lifshitz, *Quantum Mechanics*, section 33; from memory).
-#[test]
-fn a_finite_sphere_with_a_mass_step() {
-    let (radius, depth, inside, outside) = (3.0, 0.6, 0.067, 0.15);
-    let system = format!(
-        "    ends: decay\n    shells:\n      - {{thickness: {radius} nm, edge: 0 eV, mass: {inside}}}\n      - {{thickness: 1 nm, edge: {depth} eV, mass: {outside}}}"
-    );
-    let rest = "tolerance: 1 ueV";
-    let terms = [("s", "level: 1, where: {l: 0, m: 0}", rest), ("p", "level: 1, where: {l: 1, m: 0}", rest)];
-    let control = "{symbol: F, unit: kV/cm, within: [-1, 1]}";
-    let found = record("radial-finite", &spec(&system, control, "eV", &terms));
+/// Level 1 of l = 0 or 1 in a sphere of radius 3 nm, mass 0.067, in a matrix of mass 0.15: the
+/// logarithmic derivative of the radial function times 1/m is continuous (D. J. BenDaniel and C. B.
+/// Duke, Phys. Rev. 152, 683 (1966)), between j_l(k r) inside and the modified spherical Bessel function
+/// outside (L. D. Landau and E. M. Lifshitz, *Quantum Mechanics*, section 33; from memory). Edges and
+/// answer in eV.
+fn finite_sphere(l: usize, floor: f64, edge: f64) -> f64 {
+    let (radius, inside, outside) = (3.0, 0.067, 0.15);
     // (R'/R)/m inside minus outside; falls with energy below the first pole.
-    let mismatch = |l: usize, energy: f64| {
-        let k = (energy * inside / kinetic()).sqrt();
-        let q = ((depth - energy) * outside / kinetic()).sqrt();
+    let mismatch = |energy: f64| {
+        let k = ((energy - floor) * inside / kinetic()).sqrt();
+        let q = ((edge - energy) * outside / kinetic()).sqrt();
         let (x, y) = (k * radius, q * radius);
         let (inner, outer) = if l == 0 {
             (k / x.tan() - 1.0 / radius, -q - 1.0 / radius)
@@ -214,16 +207,57 @@ fn a_finite_sphere_with_a_mass_step() {
         };
         inner / inside - outer / outside
     };
-    for (l, name) in ["s", "p"].iter().enumerate() {
-        let pole = [std::f64::consts::PI, 4.493_409_457_909_064][l] / radius;
-        let (mut low, mut high) = (1e-6, (kinetic() / inside * pole * pole).min(depth) - 1e-9);
-        assert!(mismatch(l, low) > 0.0 && mismatch(l, high) < 0.0);
-        for _ in 0..100 {
-            let middle = 0.5 * (low + high);
-            if mismatch(l, middle) > 0.0 { low = middle } else { high = middle }
-        }
-        close(name, number(&found, &format!("formulas/{name}/series/0")), low, 1e-11);
+    let pole = [std::f64::consts::PI, 4.493_409_457_909_064][l] / radius;
+    let (mut low, mut high) = (floor + 1e-6, (floor + kinetic() / inside * pole * pole).min(edge) - 1e-9);
+    assert!(mismatch(low) > 0.0 && mismatch(high) < 0.0);
+    for _ in 0..100 {
+        let middle = 0.5 * (low + high);
+        if mismatch(middle) > 0.0 { low = middle } else { high = middle }
     }
+    low
+}
+
+#[test]
+fn a_finite_sphere_with_a_mass_step() {
+    let system = "    ends: decay
+    shells:
+      - {thickness: 3 nm, edge: 0 eV, mass: 0.067}
+      - {thickness: 1 nm, edge: 0.6 eV, mass: 0.15}";
+    let rest = "tolerance: 1 ueV";
+    let terms = [("s", "level: 1, where: {l: 0, m: 0}", rest), ("p", "level: 1, where: {l: 1, m: 0}", rest)];
+    let control = "{symbol: F, unit: kV/cm, within: [-1, 1]}";
+    let found = record("radial-finite", &spec(system, control, "eV", &terms));
+    for (l, name) in ["s", "p"].iter().enumerate() {
+        let expected = finite_sphere(l, 0.0, 0.6);
+        close(name, number(&found, &format!("formulas/{name}/series/0")), expected, 1e-11);
+    }
+}
+
+/// The same sphere with its floor moved by the control: exact levels are bound up to the outer edge,
+/// and what lies above it is never taken for a level.
+#[test]
+fn a_floor_that_the_control_moves() {
+    let system = "    ends: decay
+    shells:
+      - {thickness: 3 nm, edge: one*B/unit, mass: 0.067}
+      - {thickness: 1 nm, edge: 0.6 eV, mass: 0.15}";
+    let rest = "order: 4\n    tolerance: 5 meV";
+    let terms = [("s", "level: 1, where: {l: 0, m: 0}", rest), ("p", "level: 1, where: {l: 1, m: 1}", rest)];
+    let control = "{symbol: B, unit: V, within: [-0.3, 0.58]}";
+    let text = spec(system, control, "eV", &terms)
+        .replace("systems:", "constants: {one: 1 eV, unit: 1 V}\nsystems:");
+    let found = record("radial-floor", &text);
+    for (l, (name, why)) in [("s", "remainder"), ("p", "escape")].into_iter().enumerate() {
+        let formula = &found["formulas"][name];
+        assert_eq!(formula["valid"]["limited_by"][1], why, "{name}");
+        for sample in formula["samples"].as_array().expect("samples") {
+            let expected = finite_sphere(l, number(sample, "control"), 0.6);
+            close(name, number(sample, "exact"), expected, 1e-11);
+        }
+    }
+    // The level of l = 1 comes within the tolerance of the outer edge.
+    let end = number(&found, "formulas/p/valid/to");
+    close("escape", finite_sphere(1, end, 0.6), 0.6 - 0.005, 1e-7);
 }
 
 /// A uniform field moves an isotropic oscillator and lowers every level by

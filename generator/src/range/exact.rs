@@ -72,6 +72,9 @@ pub(super) fn window<T: Scalar>(
 
 /// How many levels lie below each of two energies at `x`.
 pub(super) fn counts<T: Scalar>(level: &Level<T>, x: f64, energies: [f64; 2]) -> Result<[usize; 2]> {
+    // Behind open ends, what lies above the outer edge belongs to the basis, not to the system.
+    let edge = level.model.escape_edge(x).unwrap_or(f64::INFINITY);
+    let energies = energies.map(|energy| energy.min(edge));
     let matrix = level.model.hamiltonian(x);
     if matches!(matrix, Hermitian::Banded(_)) {
         return Ok([factor(&matrix, energies[0])?.below(), factor(&matrix, energies[1])?.below()]);

@@ -95,7 +95,12 @@ fn nearest<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, set: &Set<T>) -> 
     let mut ranks: Vec<usize> = (0..set.lowest.len()).filter(|idx| *idx != number - 1).collect();
     let distance = |idx: usize| (set.lowest[idx].energy - set.energy).abs();
     ranks.sort_by(|&a, &b| distance(a).total_cmp(&distance(b)).then(a.cmp(&b)));
+    let edge = model.escape_edge(model.at()).unwrap_or(f64::INFINITY);
     for idx in ranks {
+        // Behind open ends, what lies above the outer edge belongs to the basis.
+        if set.lowest[idx].energy >= edge {
+            continue;
+        }
         let states = [set.states[0].clone(), set.lowest[idx].state.clone()];
         let series = two(model.as_ref(), set, &states, [set.energy, set.lowest[idx].energy])?;
         let coupled = (1..=2).any(|power| {
