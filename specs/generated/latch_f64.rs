@@ -36,8 +36,6 @@
 //   largest error inside: 0.020 THz (tolerance 0.02): remainder 0.020, numerical 8.0e-7,
 //     written digits 3.8e-16, rounding 8.0e-16
 //   inverse: gives the value back within 4.8e-15 THz
-//   note: a neighbouring level limits this polynomial; `form: paired` of the same order
-//     holds from -4.531 to 57.18 kV/cm
 //
 // Evaluated as c0 + d*(c1 + d*c2) with one rounding per operation and no fused
 // multiply-add; terms that are exactly zero are left out, which changes no bit. Outside
