@@ -6,6 +6,19 @@
 
 use std::fmt;
 
+/// Text without control and direction marks, which could forge a message or
+/// take over a terminal; lines are kept.
+#[must_use]
+pub fn visible(text: &str) -> String {
+    text.chars()
+        .map(|c| {
+            let hidden = matches!(c, '\u{200b}'..='\u{200f}' | '\u{2028}'..='\u{202e}' | '\u{2060}'..='\u{2069}'
+                | '\u{feff}' | '\u{e0000}'..='\u{e007f}');
+            if (c.is_control() && c != '\n') || hidden { '\u{fffd}' } else { c }
+        })
+        .collect()
+}
+
 /// The result of every fallible stage.
 pub type Result<T> = std::result::Result<T, Error>;
 

@@ -2,6 +2,8 @@
 
 mod calls;
 mod demo;
+mod faults;
 mod hostile;
+mod injection;
 mod schema;
 mod shells;

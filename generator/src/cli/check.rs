@@ -45,7 +45,7 @@ pub fn check(specs: &[PathBuf], out: Option<&Path>, as_json: bool) -> Ended {
             1 => format!("{shown}: 1 difference\n"),
             count => format!("{shown}: {count} differences\n"),
         });
-        print::result(&text)?;
+        print::people(&text)?;
     }
     if as_json {
         print::json(&json!({ "specs": results }))?;

@@ -19,7 +19,7 @@ pub fn compare(old: &Path, new: &Path, as_json: bool) -> Ended {
     if text.is_empty() {
         text.push_str("nothing moved\n");
     }
-    print::result(&text)
+    print::people(&text)
 }
 
 /// The outcome of a record (by its ending) or of a spec.

@@ -24,5 +24,5 @@ pub fn explain(path: &Path, as_json: bool) -> Ended {
         }));
     }
     let width = terminal_size::terminal_size().map_or(COLUMNS, |(width, _)| usize::from(width.0));
-    print::result(&review::text(&outcome, width))
+    print::people(&review::text(&outcome, width))
 }

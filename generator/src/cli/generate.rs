@@ -62,6 +62,6 @@ fn one(
     if !taken.is_empty() && taken.len() > 1 {
         text.insert(0, '\n');
     }
-    print::result(&text)?;
+    print::people(&text)?;
     Ok(None)
 }

@@ -4,7 +4,7 @@ use std::collections::BTreeMap;
 use std::io::{IsTerminal, Write};
 use std::path::Path;
 
-use crate::diagnostic::{Diagnostic, Error};
+use crate::diagnostic::{Diagnostic, Error, visible};
 
 use super::files;
 
@@ -65,7 +65,10 @@ pub fn render(diagnostic: &Diagnostic, text: Option<&str>) -> String {
             let spot = text.map_or(Spot::default(), |text| Spot::of(text, place.start, place.end));
             out.push_str(&format!(
                 "{}:{}:{}: error: {headline} ({})\n",
-                place.file, spot.line, spot.column, diagnostic.code
+                visible(&place.file).replace('\n', "\u{fffd}"),
+                spot.line,
+                spot.column,
+                diagnostic.code
             ));
             if !spot.shown.trim().is_empty() {
                 let number = spot.line.to_string();
@@ -89,17 +92,6 @@ pub fn render(diagnostic: &Diagnostic, text: Option<&str>) -> String {
         }
     }
     out
-}
-
-/// Text without control and direction marks, which could forge a message.
-fn visible(text: &str) -> String {
-    text.chars()
-        .map(|c| {
-            let direction =
-                matches!(c, '\u{200e}' | '\u{200f}' | '\u{202a}'..='\u{202e}' | '\u{2066}'..='\u{2069}');
-            if (c.is_control() && c != '\n') || direction { '\u{fffd}' } else { c }
-        })
-        .collect()
 }
 
 /// Where a place stands in a text, and the line cut to what is shown.

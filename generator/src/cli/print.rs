@@ -4,6 +4,7 @@ use std::io::{ErrorKind, Write};
 
 use super::Ended;
 use super::files::refused;
+use crate::diagnostic::visible;
 
 /// Prints a result as it is. A reader that has gone away is no mistake.
 pub fn result(text: &str) -> Ended {
@@ -13,6 +14,11 @@ pub fn result(text: &str) -> Ended {
         Err(e) if e.kind() == ErrorKind::BrokenPipe => Ok(0),
         Err(e) => Err(refused("the result cannot be printed", "stdout", &e)),
     }
+}
+
+/// Prints a result that holds words of the user's files.
+pub fn people(text: &str) -> Ended {
+    result(&visible(text))
 }
 
 /// Prints a value as indented JSON.

@@ -15,5 +15,5 @@ pub fn report(spec: &Path, out: &Path, against: Option<&Path>) -> Ended {
     let pictures = load::pictures(&loaded.spec, &run.outcome)?;
     let html = page(&run.outcome, &pictures, old.as_ref())?;
     files::write_one(out, html.as_bytes())?;
-    print::result(&format!("{} written\n", out.display()))
+    print::people(&format!("{} written\n", out.display()))
 }

@@ -30,5 +30,5 @@ pub fn new(kind: StarterKind, file: Option<&Path>) -> Ended {
         ));
     }
     files::write_one(path, text(kind).as_bytes())?;
-    print::result(&format!("{} written; next: shiftwright generate {}\n", path.display(), path.display()))
+    print::people(&format!("{} written; next: shiftwright generate {}\n", path.display(), path.display()))
 }

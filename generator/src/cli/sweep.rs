@@ -91,7 +91,7 @@ pub fn sweep(arguments: &SweepArguments) -> Ended {
             holds(&columns, &cells, within)
         })
         .count();
-    print::result(&format!(
+    print::people(&format!(
         "{wanted} rows in {}; {} hold the whole wanted range ({:.2} %)\n",
         arguments.out.display(),
         whole,

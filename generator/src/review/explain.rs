@@ -11,7 +11,7 @@ use serde::Serialize;
 use crate::form::Form;
 use crate::outcome::{FormulaOutcome, Outcome, ValueKind, block_name};
 
-use super::numbers::{coefficient_unit, coefficients, polynomial_name, reason, short, with_unit};
+use super::numbers::{coefficient_unit, coefficients, headline, polynomial_name, reason, short, with_unit};
 use super::plot;
 
 /// Widest line of the text.
@@ -295,7 +295,7 @@ fn advice(outcome: &Outcome, formula: &FormulaOutcome, order: usize) -> Vec<Stri
 /// The explanation as text; `width` columns are there for the residual plot.
 #[must_use]
 pub fn text(outcome: &Outcome, width: usize) -> String {
-    let mut out = format!("{}: {}\n", outcome.name, outcome.summary);
+    let mut out = headline(outcome) + "\n";
     for (formula, explanation) in outcome.formulas.iter().zip(explain(outcome)) {
         out.push('\n');
         formula_text(outcome, formula, &explanation, width, &mut out);

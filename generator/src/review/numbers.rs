@@ -3,7 +3,20 @@
 //! Not here: the digits of generated files, which their uncertainty decides.
 
 use crate::form::Form;
-use crate::outcome::FormulaOutcome;
+use crate::outcome::{FormulaOutcome, Outcome};
+
+/// Most characters of a spec's summary that are shown.
+const SUMMARY: usize = 240;
+
+/// Name and summary of a spec on one line; the record has the whole summary.
+#[must_use]
+pub fn headline(outcome: &Outcome) -> String {
+    let words: Vec<&str> = outcome.summary.split_whitespace().collect();
+    let summary = words.join(" ");
+    let shown: String = summary.chars().take(SUMMARY).collect();
+    let rest = if shown.len() < summary.len() { "..." } else { "" };
+    format!("{}: {shown}{rest}", outcome.name)
+}
 
 /// `value` to `digits` significant digits, without trailing zeros; an exponent
 /// outside 1e-4 to 1e7.

@@ -3,7 +3,7 @@
 use crate::form::Form;
 use crate::outcome::{FormulaOutcome, Outcome, ValueKind};
 
-use super::numbers::{coefficients, reason, short, with_unit};
+use super::numbers::{coefficients, headline, reason, short, with_unit};
 
 /// Widest line.
 const WIDTH: usize = 80;
@@ -15,7 +15,7 @@ const DIGITS: usize = 7;
 #[must_use]
 pub fn table(outcome: &Outcome, folder: &str) -> String {
     let mut out = String::new();
-    line(&mut out, &format!("{}: {}", outcome.name, outcome.summary));
+    line(&mut out, &headline(outcome));
     let rows: Vec<[Vec<String>; 4]> = outcome.formulas.iter().map(|formula| row(outcome, formula)).collect();
     let range_head = match outcome.control.unit.as_str() {
         "1" => format!("range of {}", outcome.control.symbol),
