@@ -2,8 +2,10 @@
 
 mod calls;
 mod demo;
+mod determinism;
 mod faults;
 mod hostile;
 mod injection;
+mod limits;
 mod schema;
 mod shells;

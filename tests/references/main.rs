@@ -6,6 +6,7 @@ mod breit_rabi;
 mod charge_box;
 mod crossing;
 mod mathieu;
+mod properties;
 mod quartic;
 mod radial;
 mod rotor_stark;
