@@ -67,8 +67,12 @@ enum Detail {
 fn any(built: &Built, number: usize, detail: Detail) -> Result<AnyLevel> {
     let own = built.number(number)?;
     Ok(match &built.model {
-        AnyModel::Real(model) => AnyLevel::Real(Box::new(within(built, detailed(model, own, detail)?))),
-        AnyModel::Complex(model) => AnyLevel::Complex(Box::new(within(built, detailed(model, own, detail)?))),
+        AnyModel::Real(model) => {
+            AnyLevel::Real(Box::new(within(built, detailed(model, own, number, detail)?)))
+        }
+        AnyModel::Complex(model) => {
+            AnyLevel::Complex(Box::new(within(built, detailed(model, own, number, detail)?)))
+        }
     })
 }
 
@@ -85,10 +89,16 @@ fn within<T: Scalar>(built: &Built, mut level: Level<T>) -> Level<T> {
 /// # Errors
 /// As [`solve`].
 pub fn level<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize) -> Result<Level<T>> {
-    detailed(model, number, Detail::Full)
+    detailed(model, number, number, Detail::Full)
 }
 
-fn detailed<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, detail: Detail) -> Result<Level<T>> {
+/// The level with this number in the model, which the reader knows by the number `shown`.
+fn detailed<T: Scalar>(
+    model: &Rc<dyn Model<T>>,
+    number: usize,
+    shown: usize,
+    detail: Detail,
+) -> Result<Level<T>> {
     let (found, detail) = match detail {
         Detail::Full => (None, detail),
         Detail::Coefficients => (Set::alone(model.as_ref(), number)?, detail),
@@ -161,7 +171,7 @@ fn detailed<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, detail: Detail) 
         notes.push(Note {
             code: "degenerate".into(),
             text: format!(
-                "level {number} stays degenerate with {} other at every order computed; any of them is meant",
+                "level {shown} stays degenerate with {} other at every order computed; any of them is meant",
                 equals(&branches, idx, &series.terms).len() - 1
             ),
         });
@@ -171,7 +181,7 @@ fn detailed<T: Scalar>(model: &Rc<dyn Model<T>>, number: usize, detail: Detail) 
             notes.push(Note {
                 code: "cancellation".into(),
                 text: format!(
-                    "coefficient {power} of level {number} is {:.1e} of the largest term that it is summed from",
+                    "coefficient {power} of level {shown} is {:.1e} of the largest term that it is summed from",
                     energies[power].abs() / terms[power]
                 ),
             });
