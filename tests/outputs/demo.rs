@@ -41,7 +41,8 @@ const STEPS: [(&str, &str, &str); 14] = [
 ];
 
 /// Demo specs that the program may still refuse, and with which word.
-const REFUSED: [(&str, &str); 2] = [("glow", "not-built"), ("needle", "range-not-covered")];
+const REFUSED: [(&str, &str); 4] =
+    [("blind", "not-built"), ("pane", "not-built"), ("glow", "not-built"), ("needle", "range-not-covered")];
 
 /// The spec with all number formats as outputs in place of its own.
 fn in_every_format(name: &str, spec: &str) -> String {

@@ -2,7 +2,9 @@
 
 mod analysis;
 mod answers;
+mod circuit;
 mod demo;
+mod family;
 mod fixed;
 mod float;
 mod host;

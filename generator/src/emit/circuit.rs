@@ -5,7 +5,7 @@
 //! slope are continuous and a simulator's iterations converge. Languages print
 //! the steps; they do no arithmetic.
 
-use super::{Source, header, spice, verilog_a};
+use super::{Source, family, header, spice, verilog_a};
 use crate::diagnostic::Result;
 use crate::form::Form;
 use crate::outcome::{FormulaOutcome, Outcome, OutputFormula, ValueKind};
@@ -64,6 +64,23 @@ fn coefficients(form: &Form) -> serde_json::Value {
 fn rounding(formula: &FormulaOutcome) -> f64 {
     let largest = formula.samples.iter().fold(0.0_f64, |most, sample| most.max(sample.formula.abs()));
     1e-12 * largest
+}
+
+/// The family's parameters as the templates print them.
+pub(super) fn family_context(outcome: &Outcome) -> Vec<minijinja::Value> {
+    outcome
+        .family
+        .iter()
+        .map(|one| {
+            minijinja::context! {
+                name => one.name.clone(),
+                unit => super::text::unit_name(&one.unit),
+                from => literal(one.from),
+                to => literal(one.to),
+                centre => literal(family::middle(one.from, one.to)),
+            }
+        })
+        .collect()
 }
 
 /// A named constant.
@@ -134,6 +151,8 @@ pub struct CircuitFormula {
     pub at: f64,
     /// All constants.
     pub constants: Vec<Constant>,
+    /// Names and expressions of what a family's parameters give, in order; inputs are `p0`, `p1` ...
+    pub prelude: Vec<(String, String)>,
     /// The polynomial, or the mean of a pair.
     pub main: Polynomial,
     /// Squared half gap of a pair and its sign.
@@ -142,9 +161,14 @@ pub struct CircuitFormula {
 
 impl CircuitFormula {
     /// Takes the numbers from a measured formula.
-    #[must_use]
-    pub fn new(outcome: &Outcome, formula: &FormulaOutcome) -> Self {
+    ///
+    /// # Errors
+    /// A family without coefficients, a broken rule of the program itself.
+    pub fn new(outcome: &Outcome, formula: &FormulaOutcome) -> Result<Self> {
         let stem = format!("{}_{}", outcome.name, formula.name);
+        if !outcome.family.is_empty() {
+            return Self::of_family(outcome, formula);
+        }
         let mut constants = Vec::new();
         let mut polynomial = |word: &str, values: &[f64]| {
             let mut names = Vec::with_capacity(values.len());
@@ -168,16 +192,44 @@ impl CircuitFormula {
                 (main, Some((polynomial("half_gap_squared_", half_gap_squared), *sign)))
             }
         };
-        Self {
+        Ok(Self {
             name: formula.name.clone(),
             unit: formula.unit.clone(),
             from: formula.valid.from,
             to: formula.valid.to,
             at: outcome.control.at,
             constants,
+            prelude: Vec::new(),
             main,
             gap,
+        })
+    }
+
+    /// Coefficients from the parameters, each held to its box.
+    fn of_family(outcome: &Outcome, formula: &FormulaOutcome) -> Result<Self> {
+        let (tensors, powers) = family::fitted(formula)?;
+        let names: Vec<String> = (0..outcome.family.len()).map(|k| format!("t{k}")).collect();
+        let mut prelude = Vec::new();
+        for (k, one) in outcome.family.iter().enumerate() {
+            let middle = literal(family::middle(one.from, one.to));
+            let half = literal(family::half(one.from, one.to));
+            prelude.push((format!("t{k}"), format!("(p{k} - {middle}) / {half}")));
         }
+        for (k, (tensor, powers)) in tensors.iter().zip(&powers).enumerate() {
+            let text = family::polynomial(&tensor.degree, powers, &names, &literal);
+            prelude.push((format!("c{k}"), text));
+        }
+        Ok(Self {
+            name: formula.name.clone(),
+            unit: formula.unit.clone(),
+            from: formula.valid.from,
+            to: formula.valid.to,
+            at: outcome.control.at,
+            constants: Vec::new(),
+            prelude,
+            main: Polynomial { names: (0..tensors.len()).map(|k| format!("c{k}")).collect() },
+            gap: None,
+        })
     }
 }
 

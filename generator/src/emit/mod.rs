@@ -6,6 +6,7 @@ pub mod record;
 
 pub mod c;
 pub mod circuit;
+pub mod family;
 pub mod header;
 mod output;
 pub mod rust;

@@ -58,6 +58,22 @@ pub fn print(outcome: &Outcome, stem: &str, formulas: &[Formula]) -> Result<Sour
     Ok(Source { file: format!("{stem}.rs"), text })
 }
 
+/// Rust text in the printer's layout under its head comment.
+///
+/// # Errors
+/// Only if a rule of the program itself is broken: the text is no Rust.
+pub(super) fn commented(lines: &[String], body: &str) -> Result<String> {
+    let file = syn::parse_file(body).map_err(Error::internal)?;
+    let mut text = String::new();
+    for line in lines {
+        text.push_str(format!("// {line}").trim_end());
+        text.push('\n');
+    }
+    text.push('\n');
+    text.push_str(&spaced(&prettyplease::unparse(&file)));
+    Ok(text)
+}
+
 /// Blank lines between items, which the printer of syntax trees leaves out.
 fn spaced(text: &str) -> String {
     let mut out = String::with_capacity(text.len() + 256);

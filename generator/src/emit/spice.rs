@@ -6,7 +6,7 @@
 use minijinja::context;
 
 use super::c::fill;
-use super::circuit::{CircuitFormula, literal};
+use super::circuit::{self, CircuitFormula, Polynomial, literal};
 use crate::diagnostic::Result;
 use crate::outcome::Outcome;
 
@@ -23,7 +23,7 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
         .formulas
         .iter()
         .map(|formula| {
-            let one = CircuitFormula::new(outcome, formula);
+            let one = CircuitFormula::new(outcome, formula)?;
             let node = |word: &str| format!("{stem}_{}_{word}", one.name);
             let volt = |name: &str| format!("V({name}, ref)");
             let x = volt(&format!("{stem}_x"));
@@ -33,13 +33,38 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
             let inline = |text: String| {
                 one.constants.iter().rev().fold(text, |text, c| text.replace(&c.name, &literal(c.value)))
             };
+            // A family's coefficients are parameters of the sub-circuit, computed once.
+            let own = |name: &str| format!("{stem}_{}_{name}", one.name);
+            let main = if one.prelude.is_empty() {
+                one.main.clone()
+            } else {
+                Polynomial { names: one.main.names.iter().map(|name| format!("{{{}}}", own(name))).collect() }
+            };
+            let mut held_to_box: Vec<String> = outcome
+                .family
+                .iter()
+                .enumerate()
+                .map(|(k, p)| {
+                    let (from, to) = (literal(p.from), literal(p.to));
+                    format!(".param {}={{max({from}, min({to}, {}))}}", own(&format!("p{k}")), p.name)
+                })
+                .collect();
+            for (name, text) in &one.prelude {
+                let mut text = text.clone();
+                for k in (0..outcome.family.len()).rev() {
+                    text = text.replace(&format!("(p{k}"), &format!("({}", own(&format!("p{k}"))));
+                    text = text.replace(&format!("(t{k} "), &format!("({} ", own(&format!("t{k}"))));
+                }
+                held_to_box.push(format!(".param {}={{{text}}}", own(name)));
+            }
             let source = |name: &str, expression: &str| format!("B{name} {name} ref V = {expression}");
-            let mut sources = vec![
+            let mut sources = held_to_box;
+            sources.extend([
                 source(&held, &format!("{x} < {from} ? {from} : ({x} > {to} ? {to} : {x})")),
                 source(&offset, &format!("{} - {}", volt(&held), literal(one.at))),
-            ];
+            ]);
             let beyond = format!("({x} - {})", volt(&held));
-            let (mut value, mut slope) = (inline(one.main.value(&d)), inline(one.main.slope(&d)));
+            let (mut value, mut slope) = (inline(main.value(&d)), inline(main.slope(&d)));
             if let Some((gap, sign)) = &one.gap {
                 let sign = if *sign < 0.0 { "-" } else { "+" };
                 let squared = node("squared");
@@ -61,15 +86,15 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
                 node("value"),
                 one.name
             ));
-            context! {
+            Ok(context! {
                 name => one.name,
                 unit => one.unit,
                 from => from,
                 to => to,
                 sources => sources,
-            }
+            })
         })
-        .collect();
+        .collect::<Result<_>>()?;
     fill(
         TEMPLATE,
         &context! {
@@ -77,7 +102,7 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
             name => stem,
             control_unit => outcome.control.unit.clone(),
             formulas => formulas,
-            family => Vec::<String>::new(),
+            family => circuit::family_context(outcome),
         },
     )
 }

@@ -6,7 +6,7 @@
 use minijinja::context;
 
 use super::c::fill;
-use super::circuit::{CircuitFormula, literal};
+use super::circuit::{self, CircuitFormula, literal};
 use crate::diagnostic::Result;
 use crate::outcome::Outcome;
 
@@ -22,21 +22,32 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
         .formulas
         .iter()
         .map(|formula| {
-            let one = CircuitFormula::new(outcome, formula);
-            let mut steps = vec![format!("value = {};", one.main.value("d")), format!("slope = {};", one.main.slope("d"))];
-            let mut locals: Vec<&str> = Vec::new();
+            let one = CircuitFormula::new(outcome, formula)?;
+            let mut steps: Vec<String> = Vec::new();
+            let mut locals: Vec<String> = Vec::new();
+            for (k, parameter) in outcome.family.iter().enumerate() {
+                let (from, to) = (literal(parameter.from), literal(parameter.to));
+                locals.push(format!("q{k}"));
+                steps.push(format!("q{k} = (p{k} < {from}) ? {from} : ((p{k} > {to}) ? {to} : p{k});"));
+            }
+            for (name, text) in &one.prelude {
+                locals.push(name.clone());
+                steps.push(format!("{name} = {};", text.replace("(p", "(q")));
+            }
+            steps.push(format!("value = {};", one.main.value("d")));
+            steps.push(format!("slope = {};", one.main.slope("d")));
             if let Some((gap, sign)) = &one.gap {
                 let sign = if *sign < 0.0 { "-" } else { "+" };
-                locals.extend(["squared", "root"]);
+                locals.extend(["squared".to_owned(), "half_gap".to_owned()]);
                 steps.push(format!("squared = {};", gap.value("d")));
-                steps.push("root = (squared > 0.0) ? sqrt(squared) : 0.0;".into());
-                steps.push(format!("value = value {sign} root;"));
+                steps.push("half_gap = (squared > 0.0) ? sqrt(squared) : 0.0;".into());
+                steps.push(format!("value = value {sign} half_gap;"));
                 steps.push(format!(
-                    "slope = (squared > 0.0) ? (slope {sign} 0.5 * ({}) / root) : slope;",
+                    "slope = (squared > 0.0) ? (slope {sign} 0.5 * ({}) / half_gap) : slope;",
                     gap.slope("d")
                 ));
             }
-            context! {
+            Ok(context! {
                 name => one.name,
                 unit => one.unit,
                 from => literal(one.from),
@@ -45,9 +56,9 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
                 constants => one.constants.iter().map(|c| context! { name => c.name.clone(), value => literal(c.value) }).collect::<Vec<_>>(),
                 steps => steps,
                 locals => locals,
-            }
+            })
         })
-        .collect();
+        .collect::<Result<_>>()?;
     fill(
         TEMPLATE,
         &context! {
@@ -55,7 +66,7 @@ pub fn print(outcome: &Outcome, header: &[String]) -> Result<String> {
             name => outcome.name.clone(),
             control_unit => outcome.control.unit.clone(),
             formulas => formulas,
-            family => Vec::<String>::new(),
+            family => circuit::family_context(outcome),
         },
     )
 }

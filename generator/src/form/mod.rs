@@ -8,6 +8,7 @@
 
 mod digits;
 mod minimax;
+pub mod tensor;
 
 pub use digits::{written, written_range, written_uncertainty};
 pub use minimax::{Best, best, widest};

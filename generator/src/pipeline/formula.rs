@@ -128,7 +128,7 @@ impl Measured {
     }
 }
 
-fn valid(spec: &Spec, ranged: &Ranged) -> Valid {
+pub(super) fn valid(spec: &Spec, ranged: &Ranged) -> Valid {
     let (from, to) = form::written_range(ranged.valid, spec.control.at);
     // An end that is the wanted one keeps the number as it was asked for.
     let exact = |end: f64, limit: Limit, wanted: f64| if limit == Limit::Within { wanted } else { end };

@@ -6,6 +6,7 @@
 //!
 //! Not here: files on disk, arguments, the terminal.
 
+mod family;
 mod formula;
 mod settle;
 mod sum;
@@ -16,9 +17,9 @@ use std::rc::Rc;
 pub use settle::{Purpose, Settled};
 pub use sum::{LevelTerm, Sum};
 
-use crate::diagnostic::{Diagnostic, Error, Result};
+use crate::diagnostic::{Error, Result};
 use crate::emit::{self, Source};
-use crate::outcome::{ControlOutcome, FormulaOutcome, Outcome, Valid, ValueKind};
+use crate::outcome::{ControlOutcome, FamilyParameterOutcome, FormulaOutcome, Outcome, Valid, ValueKind};
 use crate::range;
 use crate::spec::{Formula, LevelRef, Spec, Target, TermKind};
 
@@ -60,20 +61,59 @@ pub fn solve(spec: &Spec) -> Result<Outcome> {
 /// # Errors
 /// As [`run`], but for what only ranges show.
 pub fn series(spec: &Spec) -> Result<Vec<[f64; 5]>> {
+    Ok(sums(spec)?.iter().map(|sum| sum.series).collect())
+}
+
+/// The sums of all formulas at the operating point, without their neighbours.
+fn sums(spec: &Spec) -> Result<Vec<Sum>> {
     let mut cache = Cache::new(spec, false);
-    spec.formulas.iter().map(|formula| Ok(cache.sum(formula, 0)?.series)).collect()
+    spec.formulas.iter().map(|formula| cache.sum(formula, 0)).collect()
 }
 
 fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
-    if let Some(parameter) = spec.family.first() {
-        return Err(Error::spec(
-            Diagnostic::new(
-                "not-built",
-                format!("`family` is read but not yet fitted (`{}`)", parameter.name),
-            )
-            .action("remove `family`, or generate one spec per value of the constant"),
-        ));
+    if !spec.family.is_empty() {
+        return family::run(spec, emitting);
     }
+    prepared(spec, |sums, doubts, followed| {
+        let mut measured = Vec::with_capacity(sums.len());
+        for (idx, formula) in spec.formulas.iter().enumerate() {
+            measured.push(formula::outcome(spec, formula, &sums[idx], &followed[idx], &doubts[idx])?);
+        }
+        let mut outcome = outcome(spec, measured.iter().map(|one| one.outcome.clone()).collect());
+        let mut sources = Vec::new();
+        if emitting {
+            // Rust and C in one number format ask for the same range.
+            let known: RefCell<Vec<(usize, f64, Valid)>> = RefCell::default();
+            sources = emit::outputs(
+                spec,
+                &mut outcome,
+                &|idx, rounding| {
+                    let found = known.borrow().iter().find(|one| (one.0, one.1) == (idx, rounding)).cloned();
+                    if let Some((_, _, valid)) = found {
+                        return Ok(valid);
+                    }
+                    let (one, formula) = (&measured[idx], &spec.formulas[idx]);
+                    let valid = one.own_range(spec, formula, &followed[idx], &doubts[idx], rounding)?;
+                    known.borrow_mut().push((idx, rounding, valid.clone()));
+                    Ok(valid)
+                },
+                &emit::circuit::print,
+            )?;
+            sources.push(Source {
+                file: emit::record::file_name(&outcome.name),
+                text: emit::record::write(&outcome)?,
+            });
+        }
+        Ok(Run { outcome, sources })
+    })
+}
+
+/// Solves and follows every formula of a spec without a family, and hands that on: the sums,
+/// the numerical errors of the exact quantities, and those quantities, in the order of the spec.
+fn prepared<R>(
+    spec: &Spec,
+    then: impl FnOnce(&[Sum], &[formula::Numerical], &[formula::Exact<'_>]) -> Result<R>,
+) -> Result<R> {
     let at = spec.control.at;
     let mut cache = Cache::new(spec, true);
     let mut first = vec![0; spec.formulas.len()];
@@ -137,36 +177,7 @@ fn with_formulas(spec: &Spec, emitting: bool) -> Result<Run> {
                 }
             });
         }
-        let mut measured = Vec::with_capacity(sums.len());
-        for (idx, formula) in spec.formulas.iter().enumerate() {
-            measured.push(formula::outcome(spec, formula, &sums[idx], &followed[idx], &doubts[idx])?);
-        }
-        let mut outcome = outcome(spec, measured.iter().map(|one| one.outcome.clone()).collect());
-        let mut sources = Vec::new();
-        if emitting {
-            // Rust and C in one number format ask for the same range.
-            let known: RefCell<Vec<(usize, f64, Valid)>> = RefCell::default();
-            sources = emit::outputs(
-                spec,
-                &mut outcome,
-                &|idx, rounding| {
-                    let found = known.borrow().iter().find(|one| (one.0, one.1) == (idx, rounding)).cloned();
-                    if let Some((_, _, valid)) = found {
-                        return Ok(valid);
-                    }
-                    let (one, formula) = (&measured[idx], &spec.formulas[idx]);
-                    let valid = one.own_range(spec, formula, &followed[idx], &doubts[idx], rounding)?;
-                    known.borrow_mut().push((idx, rounding, valid.clone()));
-                    Ok(valid)
-                },
-                &emit::circuit::print,
-            )?;
-            sources.push(Source {
-                file: emit::record::file_name(&outcome.name),
-                text: emit::record::write(&outcome)?,
-            });
-        }
-        return Ok(Run { outcome, sources });
+        return then(&sums, &doubts, &followed);
     }
     Err(Error::internal("a run ended in no round"))
 }
@@ -184,7 +195,16 @@ fn outcome(spec: &Spec, formulas: Vec<FormulaOutcome>) -> Outcome {
             at: spec.control.at,
             within: spec.control.within,
         },
-        family: Vec::new(),
+        family: spec
+            .family
+            .iter()
+            .map(|one| FamilyParameterOutcome {
+                name: one.name.clone(),
+                unit: one.unit.symbol.clone(),
+                from: one.from,
+                to: one.to,
+            })
+            .collect(),
         formulas,
         outputs: Vec::new(),
         warnings: spec.warnings.clone(),

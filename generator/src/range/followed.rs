@@ -205,6 +205,26 @@ impl Followed<'_> {
         usize::from(x >= self.at)
     }
 
+    /// The operating point.
+    #[must_use]
+    pub fn at(&self) -> f64 {
+        self.at
+    }
+
+    /// The quantity at `control` by solves of its own.
+    ///
+    /// # Errors
+    /// Those of the eigenvalue solves.
+    pub fn exact(&self, control: f64) -> Result<f64> {
+        let mut sum = self.base + (self.known_change)(control);
+        if control != self.at {
+            for track in &self.tracks {
+                sum += track.times * track.exact(&track.sides[self.side(control)], control)?;
+            }
+        }
+        Ok(sum)
+    }
+
     /// The quantity at `control`, interpolated; NaN where it was not followed to. Levels
     /// go over to another one wherever that is the same state within the tolerance.
     #[must_use]

@@ -228,6 +228,7 @@ impl Document {
             systems,
             control,
             formulas: all,
+            document: (!family.is_empty()).then(|| std::rc::Rc::new(self.clone())),
             family,
             outputs,
             warnings,
@@ -390,7 +391,8 @@ fn family(scope: &Scope<'_>, name: &str, raw: &raw::Range) -> Option<FamilyParam
     let from = scope.number(&format!("{path}.from"), &raw.from, &unit, Bare::InUnit)?;
     let to = scope.number(&format!("{path}.to"), &raw.to, &unit, Bare::InUnit)?;
     if from < to {
-        return Some(FamilyParameter { name: name.to_owned(), unit, from, to });
+        let (written, place) = (constant.written.1.clone(), scope.key_place(&path));
+        return Some(FamilyParameter { name: name.to_owned(), unit, written, from, to, place });
     }
     scope.problem(
         scope

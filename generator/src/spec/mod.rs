@@ -34,7 +34,7 @@ pub use schema::schema;
 
 use nalgebra::DMatrix;
 
-use crate::diagnostic::Place;
+use crate::diagnostic::{Error, Place, Result};
 use crate::expr::Tree;
 use crate::model::C64;
 use crate::outcome::{DigestedFile, Input, Note, ValueKind};
@@ -65,6 +65,35 @@ pub struct Spec {
     pub outputs: Vec<Output>,
     /// Warnings that do not stop the run.
     pub warnings: Vec<Note>,
+    /// The document that a family is resolved from again, point by point.
+    pub document: Option<std::rc::Rc<Document>>,
+}
+
+impl Spec {
+    /// The same spec at one point of its family's box, as a spec without a family;
+    /// `point` in the order and the units of the family.
+    ///
+    /// # Errors
+    /// Mistakes that only these numbers show, such as a layer of no thickness.
+    pub fn at_point(&self, point: &[f64]) -> Result<Self> {
+        let Some(document) = &self.document else {
+            return Err(Error::internal("a family without its document"));
+        };
+        let overrides = self
+            .family
+            .iter()
+            .zip(point)
+            .map(|(parameter, &number)| {
+                let factor = parameter.unit.factor_to(&parameter.written);
+                let factor = factor.map_err(|fault| Error::spec(fault.diagnostic(None)))?;
+                Ok((parameter.name.clone(), factor.apply(number)))
+            })
+            .collect::<Result<Vec<_>>>()?;
+        let mut spec = document.resolve(&overrides)?;
+        spec.family = Vec::new();
+        spec.document = None;
+        Ok(spec)
+    }
 }
 
 /// The control.
@@ -361,10 +390,14 @@ pub struct FamilyParameter {
     pub name: String,
     /// Unit of the argument.
     pub unit: Unit,
+    /// Unit in which the constant is written.
+    pub written: Unit,
     /// Lower end, in `unit`.
     pub from: f64,
     /// Upper end, in `unit`.
     pub to: f64,
+    /// Place in the spec.
+    pub place: Place,
 }
 
 /// Output languages.

@@ -268,12 +268,13 @@ KNOWN = {
     "rotor": {"line": rotor},
     "dial": {"lower": dial},
 }
-asked = json.load(sys.stdin)
-json.dump(
-    {
-        spec: {name: list(KNOWN[spec][name](points)) for name, points in formulas.items() if name in KNOWN[spec]}
-        for spec, formulas in asked.items()
-        if spec in KNOWN
-    },
-    sys.stdout,
-)
+if __name__ == "__main__":
+    asked = json.load(sys.stdin)
+    json.dump(
+        {
+            spec: {name: list(KNOWN[spec][name](points)) for name, points in formulas.items() if name in KNOWN[spec]}
+            for spec, formulas in asked.items()
+            if spec in KNOWN
+        },
+        sys.stdout,
+    )
