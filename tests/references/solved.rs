@@ -36,6 +36,7 @@ pub fn samples(record: &Value, formula: &str) -> Vec<[f64; 3]> {
 #[track_caller]
 pub fn close(found: f64, reference: f64, relative: f64, floor: f64, what: &str) {
     let error = (found - reference).abs() / reference.abs().max(floor);
+    println!("{}", shiftwright_tests::row(what, found, reference, error));
     assert!(error <= relative, "{what}: {found:e}, reference {reference:e}, relative {error:.1e}");
 }
 

@@ -144,12 +144,19 @@ pub fn number(record: &serde_json::Value, path: &str) -> f64 {
         .unwrap_or_else(|| panic!("no number at {path} in {record:#}"))
 }
 
+/// One row of the table that the reference checks print with `--nocapture`.
+#[must_use]
+pub fn row(what: &str, found: f64, expected: f64, relative: f64) -> String {
+    format!("{what:<34} {found:>24.15e} {expected:>24.15e} {relative:>9.1e}")
+}
+
 /// Insists that two numbers agree to a relative error.
 ///
 /// # Panics
 /// If they do not.
 pub fn close(what: &str, found: f64, expected: f64, relative: f64) {
     let error = (found - expected).abs() / expected.abs();
+    println!("{}", row(what, found, expected, error));
     assert!(
         error <= relative,
         "{what}: {found:e}, expected {expected:e}, relative error {error:.2e} > {relative:.0e}"
