@@ -5,6 +5,7 @@ use std::path::{Path, PathBuf};
 use crate::diagnostic::{Diagnostic, Error, Result};
 use crate::outcome::{Outcome, Picture};
 use crate::spec::{Document, Loader, Spec};
+use crate::study::sensitivity::Sensitivity;
 
 use super::files;
 
@@ -82,6 +83,17 @@ impl Loader for Beside {
             Err(error) => Err(error.to_string()),
         }
     }
+}
+
+/// Sensitivities of a spec's formulas to its constants.
+///
+/// # Errors
+/// What the stages return.
+pub fn sensitivities(loaded: &Loaded) -> Result<Vec<Sensitivity>> {
+    let folder = loaded.path.parent().map(Path::to_owned).unwrap_or_default();
+    let name = loaded.path.display().to_string();
+    let document = Document::parse(&name, loaded.text.as_bytes(), &Beside(folder))?;
+    crate::study::sensitivity::sensitivities(&document, &loaded.spec)
 }
 
 pub use crate::pipeline::{Run, run, solve};

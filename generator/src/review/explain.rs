@@ -13,6 +13,7 @@ use crate::outcome::{FormulaOutcome, Outcome, ValueKind, block_name};
 
 use super::numbers::{coefficient_unit, coefficients, headline, polynomial_name, reason, short, with_unit};
 use super::plot;
+use crate::study::sensitivity::Sensitivity;
 
 /// Widest line of the text.
 const WIDTH: usize = 80;
@@ -91,6 +92,35 @@ pub struct Explanation {
     pub advice: Vec<String>,
     /// Remarks of the run.
     pub notes: Vec<String>,
+}
+
+/// The section on what one per cent more of each constant does.
+#[must_use]
+pub fn sensitivities(outcome: &Outcome, all: &[Sensitivity]) -> String {
+    let mut out = String::new();
+    for formula in &outcome.formulas {
+        let own: Vec<&Sensitivity> = all.iter().filter(|one| one.formula == formula.name).collect();
+        if own.is_empty() {
+            continue;
+        }
+        out.push_str(&format!("\n{}: change for one per cent more of a constant\n", formula.name));
+        let units: Vec<String> =
+            (0..3).map(|power| coefficient_unit(&formula.unit, &outcome.control.unit, power)).collect();
+        out.push_str(&format!("  E0 in {}, a in {}, b in {}\n", units[0], units[1], units[2]));
+        for one in own {
+            let [e0, a, b] = one.per_cent.map(|change| short(change, 4));
+            let end = |side: usize| one.range[side].map(|end| short(0.01 * one.value.abs() * end, 3));
+            let ends = match (end(0), end(1)) {
+                (None, None) => String::new(),
+                (low, high) => {
+                    let word = |end: Option<String>| end.unwrap_or_else(|| "-".to_owned());
+                    format!("  ends {} {}", word(low), word(high))
+                }
+            };
+            out.push_str(&format!("    {:<16} E0 {e0:>11}  a {a:>11}  b {b:>11}{ends}\n", one.constant));
+        }
+    }
+    out
 }
 
 /// Explains every formula of an outcome.

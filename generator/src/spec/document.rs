@@ -17,7 +17,7 @@ use super::{
 };
 use crate::diagnostic::{Diagnostic, Error, Place, Result};
 use crate::outcome::{DigestedFile, Note};
-use crate::units::Quantity;
+use crate::units::{Quantity, is_quantity};
 
 /// Reads the files that a spec names.
 pub trait Loader {
@@ -141,6 +141,21 @@ impl Document {
         } else {
             Err(Error::Spec(problems))
         }
+    }
+
+    /// The constants that are written as numbers: name, number and unit as written.
+    #[must_use]
+    pub fn numbers(&self, spec: &Spec) -> Vec<(String, f64, String)> {
+        let written = |name: &str| {
+            self.raw.constants.0.iter().any(|(other, scalar)| other == name && is_quantity(&scalar.0))
+        };
+        spec.inputs
+            .iter()
+            .filter_map(|input| {
+                let name = input.path.strip_prefix("constants.")?;
+                written(name).then(|| (name.to_owned(), input.value, input.unit.clone()))
+            })
+            .collect()
     }
 
     /// Turns the spec into numbers.

@@ -1,3 +1,4 @@
 //! Families, sweeps and sensitivities: many runs of the pipeline.
 
+pub mod sensitivity;
 pub mod sweep;
