@@ -93,7 +93,7 @@ pub fn sensitivities(loaded: &Loaded) -> Result<Vec<Sensitivity>> {
     let folder = loaded.path.parent().map(Path::to_owned).unwrap_or_default();
     let name = loaded.path.display().to_string();
     let document = Document::parse(&name, loaded.text.as_bytes(), &Beside(folder))?;
-    crate::study::sensitivity::sensitivities(&document, &loaded.spec)
+    Ok(crate::study::sensitivity::sensitivities(&document, &loaded.spec))
 }
 
 pub use crate::pipeline::{Run, run, solve};

@@ -9,7 +9,6 @@
 
 use serde::Serialize;
 
-use crate::diagnostic::Result;
 use crate::outcome::{FormulaOutcome, Outcome};
 use crate::pipeline;
 use crate::spec::{Document, Spec};
@@ -42,12 +41,12 @@ pub struct Sensitivity {
 /// Sensitivities of every formula to every constant that is written as a number, per formula
 /// by falling change of E0 per cent.
 ///
-/// # Errors
-/// Those of the runs; a constant that may not be moved, since the spec is
-/// refused to one side of it, is left out.
-pub fn sensitivities(document: &Document, spec: &Spec) -> Result<Vec<Sensitivity>> {
+/// A constant that may not be moved, since the spec is refused or not solved to one side of
+/// it, is left out.
+#[must_use]
+pub fn sensitivities(document: &Document, spec: &Spec) -> Vec<Sensitivity> {
     if !spec.family.is_empty() {
-        return Ok(Vec::new());
+        return Vec::new();
     }
     let mut out = Vec::new();
     for (name, value, unit) in document.numbers(spec) {
@@ -57,12 +56,9 @@ pub fn sensitivities(document: &Document, spec: &Spec) -> Result<Vec<Sensitivity
         else {
             continue;
         };
-        let series = [
-            pipeline::series(&low)?,
-            pipeline::series(&high)?,
-            pipeline::series(&near)?,
-            pipeline::series(&far)?,
-        ];
+        let solved = [&low, &high, &near, &far].map(|one| pipeline::series(one).ok());
+        let [Some(a), Some(b), Some(c), Some(d)] = solved else { continue };
+        let series = [a, b, c, d];
         let ends: [Option<Outcome>; 2] = [pipeline::solve(&low).ok(), pipeline::solve(&high).ok()];
         for (idx, formula) in spec.formulas.iter().enumerate() {
             let at = |which: usize, power: usize| series[which].get(idx).map_or(f64::NAN, |one| one[power]);
@@ -99,7 +95,7 @@ pub fn sensitivities(document: &Document, spec: &Spec) -> Result<Vec<Sensitivity
     }
     let place = |one: &Sensitivity| spec.formulas.iter().position(|formula| formula.name == one.formula);
     out.sort_by(|a, b| place(a).cmp(&place(b)).then(b.per_cent[0].abs().total_cmp(&a.per_cent[0].abs())));
-    Ok(out)
+    out
 }
 
 #[cfg(test)]
@@ -115,7 +111,7 @@ mod tests {
                     formulas:\n  low:\n    unit: 1\n    sum: [{system: s, level: 1}]\n    tolerance: 0.1\n";
         let document = Document::parse("pair.yaml", text.as_bytes(), &NoFiles).unwrap();
         let spec = document.resolve(&[]).unwrap();
-        let found = sensitivities(&document, &spec).unwrap();
+        let found = sensitivities(&document, &spec);
         let of = |name: &str| found.iter().find(|one| one.constant == name).unwrap();
         assert!((of("d").derivatives[0] + 0.6).abs() < 1e-9, "{:?}", of("d"));
         assert!((of("g").derivatives[0] + 0.8).abs() < 1e-9, "{:?}", of("g"));
